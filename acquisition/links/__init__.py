@@ -1,0 +1,1 @@
+"""Where bytes come from, and the far ends that a simulated logger serves."""

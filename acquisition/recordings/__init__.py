@@ -1,0 +1,1 @@
+"""Recordings as streams of Blocks: CSV, WAV, COMTRADE, NPZ, captured bytes."""

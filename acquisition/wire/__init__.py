@@ -1,0 +1,1 @@
+"""Wire formats: pure decoders and their encoders."""

@@ -1,0 +1,1 @@
+"""The command: arguments, exit codes, and the one place where rooms are joined."""

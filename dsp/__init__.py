@@ -1,0 +1,1 @@
+"""Pure numbers: windows, frequency, amplitude, harmonics, power, meters, verdict."""

@@ -1,0 +1,1 @@
+"""The site's setup: channels, dividers, clamps; turns a Block into a Waveform."""

@@ -1,0 +1,1 @@
+"""A watch over time: engine, events, snapshot and the words for them."""

@@ -1,0 +1,1 @@
+"""Invented circuits with closed-form truths, and the simulated logger that samples them."""

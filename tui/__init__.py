@@ -1,0 +1,1 @@
+"""What a person looks at: pages and widgets that draw a Snapshot, nothing else."""

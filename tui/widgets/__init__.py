@@ -1,0 +1,1 @@
+"""Widgets that draw numbers, traces and spectra from arrays."""
