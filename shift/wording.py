@@ -126,6 +126,14 @@ def gap(lost: int | None, seconds: float | None) -> str:
     return f"{lost} samples of every channel are missing here ({duration(seconds)})."
 
 
+def gap_ends(lost: float | None, places: int, seconds: float) -> str:
+    """Sentence once samples come without a break again."""
+    where = "in one place" if places == 1 else f"in {places} places over {duration(seconds)}"
+    if lost is None:
+        return f"Samples come without a break again; an unknown number is missing {where}."
+    return f"Samples come without a break again; {lost:.0f} of every channel are missing {where}."
+
+
 def _prefix(value: float, unit: str) -> tuple[str, float]:
     if unit not in ("V", "A", "W", "VA", "var"):
         return "", 1.0
