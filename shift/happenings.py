@@ -4,6 +4,7 @@ Looks at whole runs of windows for changes of state, so a quiet hour costs nothi
 follow each other closely are one event: a bad cable is one story, not ten thousand.
 """
 
+import itertools
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
@@ -197,7 +198,7 @@ class Happenings:
 def _runs(state: npt.NDArray[np.bool_]) -> list[tuple[int, int, bool]]:
     """Stretches of equal state: (first window, one past the last, the state)."""
     cuts = [0, *(np.flatnonzero(state[1:] != state[:-1]) + 1).tolist(), len(state)]
-    return [(a, b, bool(state[a])) for a, b in zip(cuts, cuts[1:], strict=False) if b > a]
+    return [(a, b, bool(state[a])) for a, b in itertools.pairwise(cuts) if b > a]
 
 
 def _when(event: Event) -> float:
