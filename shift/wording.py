@@ -47,8 +47,7 @@ def percent(fraction: float, u: float | None = None) -> str:
         return "no figure"
     places = 1 if abs(fraction) >= 0.01 else 2
     if u and math.isfinite(u):
-        places = min(3, max(0, 1 - math.floor(math.log10(100.0 * u)))) if u > 0 else places
-        places = min(places, 2)
+        places = min(2, _places(100.0 * fraction, 100.0 * u))
     return f"{100.0 * fraction:.{places}f} %"
 
 
