@@ -69,9 +69,9 @@ def judgement_words(verdict: Verdict) -> str:
     """The verdict on one meter card in a few words, with how far off and how sure."""
     if verdict.judgement is Judgement.UNSURE and not math.isfinite(verdict.error):
         return "no reading to compare"
-    error = percent(verdict.error, verdict.u_error)
-    u = percent(2.0 * verdict.u_error)
-    return f"{verdict.judgement.value} ({error} ± {u})"
+    error, u = 100.0 * verdict.error, 100.0 * verdict.u_error
+    places = min(2, _places(error, u))
+    return f"{verdict.judgement.value} ({error:+.{places}f} % ± {2.0 * u:.{places}f} %)"
 
 
 def duration(seconds: float) -> str:
