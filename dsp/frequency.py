@@ -1,0 +1,169 @@
+"""The phase of the fundamental over time, and from it the frequency.
+
+The reference is multiplied by a rotating phasor under a smooth taper of three cycles (three
+one-cycle moving averages in a row), so that harmonics and DC vanish; one such product stands
+every half cycle. The angle is the fundamental's phase there. A line through the phases of a
+window is its frequency; the scatter about the line says how sure that is and whether there is a
+fundamental at all.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+Floats = npt.NDArray[np.float64]
+
+TAPER_CYCLES = 3
+LOWEST, HIGHEST = 38.0, 72.0  # Hz: where a mains fundamental is looked for
+
+
+class PhaseTracker:
+    """Phases of a fundamental near `nu` cycles a sample, on a grid of half cycles."""
+
+    def __init__(self, nu: float, first_sample: int) -> None:
+        """Track near `nu`; `first_sample` is the index of the first sample it will be given."""
+        self.nu = nu
+        cycle = max(2, round(1.0 / nu))
+        self.hop = max(1, round(0.5 / nu))
+        box = np.ones(cycle)
+        taper = np.convolve(np.convolve(box, box), box)
+        self.length = len(taper)
+        n = np.arange(self.length) - (self.length - 1) / 2.0
+        kernel = taper * np.exp(-2j * np.pi * nu * n) * (2.0 / taper.sum())
+        self._kernel = np.column_stack((kernel.real, kernel.imag))
+        self.origin = first_sample  # sample under the first taper's first weight
+        self.centre = first_sample + (self.length - 1) / 2.0  # position of point 0
+        self.phase = np.empty(0)  # unwrapped angle of the fundamental as a cosine [rad]
+        self.amplitude = np.empty(0)  # peak value, in the signal's unit
+        self._dropped = 0  # points let go at the front
+
+    @property
+    def points(self) -> int:
+        """How many points there are, those let go included."""
+        return self._dropped + len(self.phase)
+
+    def next_sample(self) -> int:
+        """First sample that the next point needs."""
+        return self.origin + self.points * self.hop
+
+    def extend(self, samples: Floats, first: int) -> None:
+        """Add every point that `samples` (n,), which start at index `first`, allow."""
+        skip = self.next_sample() - first
+        count = (len(samples) - skip - self.length) // self.hop + 1
+        if count <= 0:
+            return
+        views = np.lib.stride_tricks.sliding_window_view(samples[skip:], self.length)
+        product = views[:: self.hop][:count] @ self._kernel
+        angles = np.arctan2(product[:, 1], product[:, 0])
+        ahead = 2.0 * np.pi * self.nu * self.hop
+        last = self.phase[-1] if len(self.phase) else angles[0] - ahead
+        steps = np.diff(angles, prepend=last) - ahead
+        steps -= 2.0 * np.pi * np.round(steps / (2.0 * np.pi))
+        phase = last + np.cumsum(steps + ahead)
+        # cumsum drifts by rounding only; snap each point back to its own angle.
+        phase = angles + 2.0 * np.pi * np.round((phase - angles) / (2.0 * np.pi))
+        self.phase = np.concatenate((self.phase, phase))
+        self.amplitude = np.concatenate((self.amplitude, np.hypot(product[:, 0], product[:, 1])))
+
+    def drop_before(self, position: float) -> None:
+        """Let go of points before `position`, keeping two."""
+        spare = int((position - self.centre) / self.hop) - self._dropped - 2
+        if spare > 0:
+            self.phase, self.amplitude = self.phase[spare:], self.amplitude[spare:]
+            self._dropped += spare
+
+    def positions(self) -> Floats:
+        """Where the kept points stand."""
+        return self.centre + self.hop * (
+            self._dropped + np.arange(len(self.phase), dtype=np.float64)
+        )
+
+    def phase_at(self, position: float) -> float:
+        """Phase at a position, carried on straight beyond the points."""
+        at = self.positions()
+        inside = float(np.clip(position, at[0], at[-1]))
+        phase = float(np.interp(inside, at, self.phase))
+        return phase + 2.0 * np.pi * self.nu * (position - inside)
+
+    def fit(self, begins: Floats, ends: Floats) -> "LineFit":
+        """Lines through the points of windows from `begins` to `ends`, each (w,)."""
+        base = self.centre + self.hop * self._dropped
+        low = np.clip(np.ceil((begins - base) / self.hop), 0, None).astype(np.int64)
+        high = np.clip(np.floor((ends - base) / self.hop), 0, max(0, len(self.phase) - 1)).astype(
+            np.int64
+        )
+        count = np.maximum(high - low + 1, 1)
+        low = np.minimum(low, max(0, len(self.phase) - 1))
+        index = low[:, None] + np.arange(int(count.max()))
+        mask = index <= high[:, None]
+        index = np.minimum(index, len(self.phase) - 1)
+        at = (index - low[:, None]).astype(float)
+        weight = mask.astype(float)
+        phase = self.phase[index] - self.phase[low][:, None]
+        amplitude = self.amplitude[index]
+        n = np.maximum(weight.sum(1), 1.0)
+        mean_at = (weight * at).sum(1) / n
+        centred = weight * (at - mean_at[:, None])
+        spread = np.maximum((centred * (at - mean_at[:, None])).sum(1), 1e-12)
+        mean_phase = (weight * phase).sum(1) / n
+        slope = (centred * phase).sum(1) / spread
+        rest = weight * (phase - mean_phase[:, None] - slope[:, None] * (at - mean_at[:, None]))
+        scatter = np.sqrt((rest**2).sum(1) / np.maximum(n - 2.0, 1.0))
+        mean_amplitude = (weight * amplitude).sum(1) / n
+        ripple = np.sqrt((weight * (amplitude - mean_amplitude[:, None]) ** 2).sum(1) / n)
+        # Neighbouring tapers overlap: about five points in a row carry one independent phase,
+        # which makes the slope of a line through n points that much less sure.
+        u_slope = scatter * np.sqrt(5.0 / spread)
+        return LineFit(
+            nu=slope / (2.0 * np.pi * self.hop),
+            u_nu=u_slope / (2.0 * np.pi * self.hop),
+            phase=self.phase[low] + mean_phase,
+            at=base + self.hop * (low + mean_at),
+            scatter=scatter,
+            amplitude=mean_amplitude,
+            ripple=ripple / np.maximum(mean_amplitude, 1e-300),
+            points=n,
+        )
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class LineFit:
+    """Lines through phase points, one a window; every column (w,)."""
+
+    nu: Floats  # cycles a sample
+    u_nu: Floats  # standard uncertainty
+    phase: Floats  # rad, at position `at`
+    at: Floats
+    scatter: Floats  # rad, about the line
+    amplitude: Floats  # mean peak value of the fundamental
+    ripple: Floats  # scatter of the amplitude, relative
+    points: Floats
+
+
+def coarse(samples: Floats, rate: float) -> tuple[float, float]:
+    """Strongest line between 38 and 72 Hz.
+
+    Args:
+        samples: (n,), at least 0.1 s.
+        rate: samples a second.
+    Returns:
+        its frequency [Hz] and its share of the power that varies (0 where nothing varies).
+    """
+    x = samples - samples.mean()
+    power = float(np.dot(x, x)) / len(x)
+    if power <= 0.0 or rate <= 2.0 * HIGHEST:
+        return 0.0, 0.0
+    taper = np.hanning(len(x) + 2)[1:-1]
+    size = 1 << (4 * len(x) - 1).bit_length()
+    spectrum = np.abs(np.fft.rfft(x * taper, size)) * (2.0 / taper.sum())
+    step = rate / size
+    low, high = int(np.ceil(LOWEST / step)), int(np.floor(HIGHEST / step))
+    if high - low < 2:
+        return 0.0, 0.0
+    peak = low + int(np.argmax(spectrum[low : high + 1]))
+    if peak in (low, high):  # the flank of a stronger line outside
+        return 0.0, 0.0
+    a, b, c = spectrum[peak - 1 : peak + 2]
+    offset = 0.5 * (a - c) / (a - 2.0 * b + c) if a - 2.0 * b + c else 0.0
+    return (peak + float(offset)) * step, float(b) ** 2 / 2.0 / power
