@@ -87,8 +87,8 @@ def _rectified(x: Floats, at: Ends, mean: Floats, parts: int) -> Floats:
         shift = np.repeat(mean, parts)
         shift = np.append(shift, mean[-1])
     size = np.abs(z)
-    inside = np.add.reduceat(size, at.whole - 1)[:-1]
-    # The four samples about an end belong to both windows, each with its own mean.
+    inside = np.add.reduceat(size, at.inner)[:-1]
+    # The samples about an end belong to both windows, each with its own mean.
     taps = x[at.taps]
     left = np.append(shift[0], shift[:-1])  # mean of the part that ends here
     upper = at.partial(np.abs(taps - left[:, None]))

@@ -10,7 +10,7 @@ import functools
 import numpy as np
 import numpy.typing as npt
 
-from dsp.edges import end_weights
+from dsp.edges import REACH, end_weights
 
 Floats = npt.NDArray[np.float64]
 Phasors = npt.NDArray[np.complex128]
@@ -49,8 +49,8 @@ def phasors(samples: Floats, begins: Floats, ends: Floats, cycles: int) -> Phaso
 
 
 def _group(samples: Floats, begins: Floats, ends: Floats, cycles: int, result: Phasors) -> None:
-    start = np.floor(begins).astype(np.int64) - 1
-    length = int(np.max(np.floor(ends).astype(np.int64) + 3 - start))
+    start = np.floor(begins).astype(np.int64) + 1 - REACH
+    length = int(np.max(np.floor(ends).astype(np.int64) + 1 + REACH - start))
     length = min(length, samples.shape[1] - int(start.max()))
     size = _fast_length(int(np.ceil(_OVERSAMPLING * length)) + _WIDTH)
     nu = cycles / (ends - begins)
