@@ -22,8 +22,11 @@ def spline_step(t: Floats) -> Floats:
     """Integral of the spline up to `t` samples past its centre; 0 and 1 beyond its reach."""
     t = np.clip(t / SPREAD, -2.0, 2.0)
     u = np.abs(t)
-    inner = 2.0 / 3.0 * u - u**3 / 3.0 + u**4 / 8.0
-    outer = 0.5 - (2.0 - u) ** 4 / 24.0
+    # Products, not powers: numpy's power is ten times slower.
+    square = u * u
+    inner = u * (2.0 / 3.0 - square * (1.0 / 3.0 - u / 8.0))
+    rest = (2.0 - u) * (2.0 - u)
+    outer = 0.5 - rest * rest / 24.0
     return 0.5 + np.sign(t) * np.where(u < 1.0, inner, outer)
 
 
@@ -58,6 +61,6 @@ def end_weights(a: Floats, b: Floats, start: npt.NDArray[np.int64], length: int)
     head = np.arange(min(length, 2 * REACH + 2))
     weights[:, head] -= spline_step(a[:, None] - n[:, head])
     # Past the end all is 0; only the last few samples of each window lie near it.
-    tail = np.arange(max(0, int(np.min(np.floor(b)) - np.max(start)) - REACH - 1), length)
+    tail = np.arange(max(0, int(np.min(np.floor(b) - start)) - REACH - 1), length)
     weights[:, tail] *= spline_step(b[:, None] - n[:, tail])
     return weights
