@@ -1,0 +1,84 @@
+"""Turns Blocks of codes into Waveforms in volts and amperes."""
+
+import numpy as np
+import numpy.typing as npt
+
+from acquisition.block import Block
+from acquisition.stream import StreamInfo
+from dsp.waveform import Waveform
+from rig.channels import describe, matched, scale
+from rig.setup import Setup
+
+Floats = npt.NDArray[np.float64]
+
+
+class Scaler:
+    """Scales every channel of one stream: value = gain * (code + offset)."""
+
+    def __init__(self, setup: Setup, info: StreamInfo) -> None:
+        """Join a setup to a stream.
+
+        Raises:
+            SetupError: the setup names an input that the stream does not have.
+        """
+        self.channels = describe(setup, info)
+        scales = [
+            scale(said, hint)
+            for said, hint in zip(matched(setup, info), info.channels, strict=True)
+        ]
+        self._gain = np.array([gain for gain, _, _ in scales])[:, None]
+        self._offset = np.array([offset for _, offset, _ in scales])[:, None]
+        self._plain = bool(np.all(self._gain == 1.0) and np.all(self._offset == 0.0))
+        self._skipped = 0
+        self._floating = not info.sample_type.startswith(("u", "i"))
+
+    def waveforms(self, block: Block, rate: float) -> list[Waveform]:
+        """Waveforms of one block: one, or several when sets that are no numbers part it.
+
+        Args:
+            block: codes (channels, sets).
+            rate: sets a second.
+        """
+        codes = block.codes
+        if codes.dtype == np.float64 and self._plain:
+            samples = codes.astype(np.float64, copy=False)
+        else:
+            samples = codes.astype(np.float64)
+            samples += self._offset
+            samples *= self._gain
+        if self._floating or codes.dtype.kind == "f":
+            good: npt.NDArray[np.bool_] = np.asarray(np.isfinite(samples).all(axis=0))
+            if self._skipped or not good.all():
+                return self._parted(block, samples, good, rate)
+        return [
+            Waveform(
+                samples=samples,
+                rate=rate,
+                start=block.index,
+                gap_before=block.gap_before,
+                lost_before=block.lost_before,
+                arrived=block.arrived,
+            )
+        ]
+
+    @staticmethod
+    def _parted(block: Block, samples: np.ndarray, good: np.ndarray, rate: float) -> list[Waveform]:
+        edges = np.flatnonzero(np.diff(np.concatenate(([False], good, [False])).astype(np.int8)))
+        parts: list[Waveform] = []
+        done = -self._skipped  # sets at the end of the block before were no numbers either
+        for a, b in edges.reshape(-1, 2).tolist():
+            skipped = a - done
+            lost = block.lost_before if done <= 0 else 0
+            parts.append(
+                Waveform(
+                    samples=np.ascontiguousarray(samples[:, a:b]),
+                    rate=rate,
+                    start=block.index + a,
+                    gap_before=skipped > 0 or (done <= 0 and block.gap_before),
+                    lost_before=None if lost is None else lost + skipped,
+                    arrived=block.arrived,
+                )
+            )
+            done = b
+        self._skipped = len(good) - done
+        return parts
