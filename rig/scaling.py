@@ -61,8 +61,9 @@ class Scaler:
             )
         ]
 
-    @staticmethod
-    def _parted(block: Block, samples: np.ndarray, good: np.ndarray, rate: float) -> list[Waveform]:
+    def _parted(
+        self, block: Block, samples: Floats, good: npt.NDArray[np.bool_], rate: float
+    ) -> list[Waveform]:
         edges = np.flatnonzero(np.diff(np.concatenate(([False], good, [False])).astype(np.int8)))
         parts: list[Waveform] = []
         done = -self._skipped  # sets at the end of the block before were no numbers either
