@@ -150,7 +150,7 @@ class _Board:
         if spec.noise_codes:
             level += spec.noise_codes * self._rng.standard_normal(level.shape)
         codes = np.rint(level + self._half)
-        return np.clip(codes, 0, 2 * self._half - 1).astype(np.uint16)
+        return np.asarray(np.clip(codes, 0, 2 * self._half - 1), np.uint16)
 
     def _send(self, codes: npt.NDArray[np.uint16], flags: int) -> bytes:
         index = self._index

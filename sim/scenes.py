@@ -66,7 +66,7 @@ class Hall:
         "a neutral that carries the triplens of all three phases."
     )
     nominal = 50.0
-    channels = (
+    channels: tuple[SceneChannel, ...] = (
         SceneChannel("supply", "V", 400.0),
         SceneChannel("way 7 V", "V", 400.0),
         SceneChannel("way 7 A", "A", 20.0),
@@ -129,7 +129,7 @@ class Hall:
     def _angle_of_half_cycle(self, phase: Floats) -> Floats:
         """A dimmer decides at the zero crossing and keeps its angle for the half-cycle."""
         begun = np.floor(phase / np.pi) * np.pi / (2.0 * np.pi * self.frequency)
-        return np.interp(np.mod(begun, self.period), self._times, self._angles)
+        return np.asarray(np.interp(np.mod(begun, self.period), self._times, self._angles))
 
 
 class Workshop:
@@ -142,7 +142,10 @@ class Workshop:
         "takes six times its running current for a moment and pulls the supply down."
     )
     nominal = 50.0
-    channels = (SceneChannel("bench supply", "V", 400.0), SceneChannel("feeder", "A", 90.0))
+    channels: tuple[SceneChannel, ...] = (
+        SceneChannel("bench supply", "V", 400.0),
+        SceneChannel("feeder", "A", 90.0),
+    )
     supply = 231.0  # V
     frequency = 50.02  # Hz
     pulse_peak = 14.0  # A
@@ -187,7 +190,10 @@ class Clean:
     title = "Clean supply, drying cabinet"
     description = "A plain sine into a plain resistor. Every kind of meter shows the same."
     nominal = 50.0
-    channels = (SceneChannel("supply", "V", 400.0), SceneChannel("heater", "A", 20.0))
+    channels: tuple[SceneChannel, ...] = (
+        SceneChannel("supply", "V", 400.0),
+        SceneChannel("heater", "A", 20.0),
+    )
     supply = 229.6  # V
     current = 6.4  # A
     frequency = 50.01  # Hz
@@ -212,7 +218,10 @@ class PumpHouse:
         "with it as the pump works against its valve."
     )
     nominal = 60.0
-    channels = (SceneChannel("cable end", "V", 250.0), SceneChannel("drive", "A", 60.0))
+    channels: tuple[SceneChannel, ...] = (
+        SceneChannel("cable end", "V", 250.0),
+        SceneChannel("drive", "A", 60.0),
+    )
     supply = 118.5  # V
     frequency = 60.01  # Hz
     block = 24.0  # A
