@@ -77,7 +77,8 @@ class CrestwireDecoder:
         self._bad = 0
         self._discarded_bytes = 0
         self._reconnects = 0
-        self._unknown = 0
+        self._unknown = 0  # frames of a kind not known here, skipped
+        self.frames = 0  # with a good sum
         self._notes: tuple[str, ...] = ()
 
     @property
@@ -148,6 +149,7 @@ class CrestwireDecoder:
         else:
             return at
         self._lead_in = False
+        self.frames += 1
         head, boot, sequence, index, tick, channels, code, flags, _, count = HEADER.unpack_from(
             body
         )
@@ -230,6 +232,7 @@ class CrestwireDecoder:
             tick = t
             recent((s, t))
             at += 1
+        self.frames += frames
         position = ledger.position
         ledger.advance(sets, last_sets, frames, tick)
         if sets:
