@@ -40,8 +40,9 @@ def add_recording(parser: argparse.ArgumentParser) -> None:
     )
     parser.add_argument(
         "--format",
-        choices=("crestwire", "text", "raw"),
-        help="format of captured bytes, when it is not to be found out",
+        metavar="FORMAT",
+        help="crestwire, text, or raw:TYPE:CHANNELS:ORDER such as raw:u16:2:little, "
+        "when it is not to be found out",
     )
 
 
