@@ -3,7 +3,6 @@
 It neither computes nor draws. What a command needs of several rooms at once is built here.
 """
 
-import sys
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import replace
 from pathlib import Path
@@ -11,7 +10,7 @@ from types import TracebackType
 from typing import Self
 
 from acquisition.autodecode import AutoDecoder
-from acquisition.errors import LinkAbsent, RecordingError
+from acquisition.errors import RecordingError
 from acquisition.link import Link
 from acquisition.links import pace
 from acquisition.reader import Reader
@@ -31,6 +30,7 @@ from shift.live import Live, WatchPlan
 from shift.summary import Summary, with_run
 from sim import device as sim_device
 from sim import scenes as sim_scenes
+from sim.device import LoggerSpec
 from sim.faults import parse as parse_faults
 
 DEFAULT_BAUD = 115200  # what most boards' examples use; USB boards ignore it
@@ -162,7 +162,9 @@ class Measuring:
 
     def status(self) -> ReaderStatus:
         """The account so far, in the shape of a reader's."""
-        base = ReaderStatus(state=LinkState.FINISHED, link=str(self._recording.path), info=self.info)
+        base = ReaderStatus(
+            state=LinkState.FINISHED, link=str(self._recording.path), info=self.info
+        )
         tally = replace(base.tally, received=self._received, lost=self._lost)
         return replace(base, tally=tally)
 
@@ -209,12 +211,12 @@ def open_measuring(
 def _recording(
     path: Path, rate: float | None, scale: Mapping[str, float] | None, format_: str | None
 ) -> Recording:
-    return open_recording(path, RecordingOptions(rate=rate, scale=dict(scale or {}), format=format_))
+    return open_recording(
+        path, RecordingOptions(rate=rate, scale=dict(scale or {}), format=format_)
+    )
 
 
-def _opener(
-    source: Source, setup: Setup, speed: float, baud: int | None
-) -> Callable[[], Link]:
+def _opener(source: Source, setup: Setup, speed: float, baud: int | None) -> Callable[[], Link]:
     """How to open the source, now and again after a loss."""
     if isinstance(source, SimSource):
         spec = _sim_spec(source)
@@ -228,6 +230,82 @@ def _opener(
 
     rate = baud or _baud(source.options.get("baud")) or setup.baud or DEFAULT_BAUD
     return lambda: SerialLink(source.device, rate)
+
+
+def _sim_spec(source: SimSource) -> LoggerSpec:
+    """A simulated logger from `sim:SCENE?key=value&…`; keys are those of `simulate`."""
+    options = dict(source.options)
+
+    def number(key: str, usual: float) -> float:
+        text = options.pop(key, None)
+        if text is None:
+            return usual
+        try:
+            return float(text)
+        except ValueError:
+            raise UsageError(f"sim: {key}={clean(text, 30)} is not a number") from None
+
+    rate = number("rate", 0.0)
+    spec = logger_spec(
+        source.scene,
+        wire=options.pop("wire", "crestwire"),
+        rate=rate or None,
+        bits=int(number("bits", 12)),
+        noise=number("noise", 0.5),
+        ppm=number("ppm", 0.0),
+        drift=number("drift", 0.0),
+        seed=int(number("seed", 1)),
+        faults=options.pop("faults", ""),
+    )
+    if options:
+        error = UsageError(
+            f"sim: {clean(next(iter(options)), 30)} is no option of a simulated logger"
+        )
+        error.add_note("there are wire, rate, bits, noise, ppm, drift, seed and faults")
+        raise error
+    return spec
+
+
+def logger_spec(
+    scene: str,
+    *,
+    wire: str = "crestwire",
+    rate: float | None = None,
+    bits: int = 12,
+    noise: float = 0.5,
+    ppm: float = 0.0,
+    drift: float = 0.0,
+    seed: int = 1,
+    faults: str = "",
+) -> LoggerSpec:
+    """A simulated logger.
+
+    Raises:
+        SimError: there is no such scene, or a fault does not read.
+    """
+    found = sim_scenes.find(scene)
+    # Text is long: at 8000 sets a second it would not fit a common serial line.
+    usual = 2000.0 if wire == "text" else 8000.0
+    spec = LoggerSpec(
+        scene=found,
+        format=wire,
+        rate=rate or usual,
+        bits=bits,
+        noise_codes=noise,
+        clock_ppm=ppm,
+        drift_ppm=drift,
+        seed=seed,
+        sets_per_frame=32 if wire == "text" else 64,
+        faults=parse_faults(faults),
+    )
+    sim_device.check(spec)
+    return spec
+
+
+def scene_list() -> list[tuple[str, str, str]]:
+    """(name, title, description) of every scene."""
+    scenes = [make() for make in sim_scenes.SCENES.values()]
+    return [(scene.name, scene.title, scene.description) for scene in scenes]
 
 
 def _baud(text: str | None) -> int | None:

@@ -27,6 +27,8 @@ SINE_FORM_FACTOR = np.pi / (2.0 * np.sqrt(2.0))
 # (common practice, no source).
 LOW_OF_RANGE, LOW_OF_STEPS = 0.02, 10.0
 UNLOCKED_PARTS = 10
+# Below this share of the RMS what stands at the fundamental is leftover, and THD-F says nothing.
+NO_FUNDAMENTAL = 0.02
 
 
 def measure(
@@ -119,8 +121,8 @@ def _figures(
     crest = np.where(live, peak / safe, np.nan)
     form = np.where(arv > 0.0, rms / np.where(arv > 0.0, arv, 1.0), np.nan)
     fundamental = np.abs(lines[:, 0])
-    # Rounding leaves 1e-16 of a phasor on a dead channel; that is no fundamental.
-    has = fundamental > 1e-9 * safe * live
+    # A neutral with nothing but triplens, a dead channel: no fundamental to compare with.
+    has = fundamental > NO_FUNDAMENTAL * safe * live
     power = np.nansum(np.abs(lines[:, 1:]) ** 2, axis=1)
     base = np.where(has, fundamental, 1.0)
     thd = np.where(has, np.sqrt(power) / base, np.nan)

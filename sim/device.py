@@ -57,11 +57,16 @@ def frames(spec: LoggerSpec, account: Account | None = None) -> Iterator[tuple[f
     Raises:
         SimError: the specification cannot be built.
     """
-    _check(spec)
+    check(spec)
     return _Board(spec, account or Account()).run()
 
 
-def _check(spec: LoggerSpec) -> None:
+def check(spec: LoggerSpec) -> None:
+    """Refuse what cannot be built.
+
+    Raises:
+        SimError: a number out of range, or an unknown wire format.
+    """
     if not 200.0 <= spec.rate <= 200_000.0:
         error = SimError(f"a rate of {spec.rate:g} sets a second is out of range")
         error.add_note("choose one from 200 to 200000")

@@ -85,7 +85,9 @@ def _print(watch: "compose.Watch", options: argparse.Namespace) -> int:  # noqa:
     from crestwatch.output import JsonLinesOutput, Output, PlainOutput
     from shift.wording import CAUTION_TITLE, CAUTIONS
 
-    diagnostics.note(f"{CAUTION_TITLE}: " + " ".join(CAUTIONS))
+    diagnostics.note(f"{CAUTION_TITLE}:")
+    for caution in CAUTIONS:
+        sys.stderr.write(f"  {caution}\n")
     output: Output = JsonLinesOutput(sys.stdout) if options.json_lines else PlainOutput(sys.stdout)
     live = watch.live
     began = time.monotonic()
