@@ -41,7 +41,7 @@ class FlacRecording:
         except self._fault as error:
             raise refused(
                 f"{name} cannot be decoded as FLAC: {str(error).rsplit(': ', 1)[-1]}",
-                "a FLAC that was cut while recording cannot be opened; record WAV where that matters",
+                "a FLAC cut while recording cannot be opened; record WAV where that matters",
             ) from None
         # libsndfile gives the widest count it knows for a stream that does not tell.
         self.sets: int | None = self._file.frames if self._file.frames < 1 << 50 else None
@@ -60,10 +60,10 @@ class FlacRecording:
             self._file.close()
             raise
         notes: list[str] = []
-        # Integers below 16 bits come widened from the decoder; they are shifted back, and signed.
+        # The decoder widens to 16 or 32 bits; `blocks` shifts back. 8 bits are signed in FLAC.
         self.info = StreamInfo(
             format="flac",
-            channels=tuple(_hint(one, bits, scale.get(one)) for one in names),
+            channels=tuple(pcm_hint(one, bits, scale.get(one)) for one in names),
             rate=chosen_rate(options, float(self._file.samplerate), notes),
             sample_type=f"i{bits}",
             bits=bits,
@@ -107,12 +107,3 @@ class FlacRecording:
     def close(self) -> None:
         """Let go of the file."""
         self._file.close()
-
-
-def _hint(name: str, bits: int, full: float | None) -> Any:
-    hint = pcm_hint(name, bits, full)
-    if bits == 8:  # signed here, other than in WAV
-        from dataclasses import replace
-
-        return replace(hint, offset_codes=0.0, rails=(-128, 127))
-    return hint

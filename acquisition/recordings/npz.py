@@ -1,187 +1,281 @@
-"""NPZ and NPY: `samples` (channels x n, or n), `rate`, optional `names` and `units`. No pickle."""
+"""NPZ and NPY recordings: `samples` (channels × n, or n), `rate`, optional `names` and `units`.
 
-import ast
-import math
+Pickles are refused. A header is believed only after it was compared with the size of the file.
+What lies uncompressed in the file is mapped, not loaded, so a day of samples needs little memory.
+"""
+
+import io
+import struct
 import zipfile
+import zlib
 from collections.abc import Iterator
+from dataclasses import dataclass
 from pathlib import Path
-from typing import IO, Any
+from typing import Any, BinaryIO
 
 import numpy as np
+import numpy.typing as npt
 
 from acquisition.block import Block
-from acquisition.recordings.faults import absent, damaged, refused
+from acquisition.recordings.placing import SETS_AT_A_TIME, Placer, unique
+from acquisition.recordings.readable import refused, shown, size_of
 from acquisition.recordings.recording import RecordingOptions
+from acquisition.recordings.wav import MOST_CHANNELS, chosen_rate
 from acquisition.stream import ChannelHint, StreamInfo, clean
 
-SETS_AT_ONCE = 1 << 17
-MOST_CHANNELS = 256
+# A compressed array must be unpacked whole; beyond this, that is asking for trouble.
+MOST_UNPACKED = 1 << 30  # bytes
+
+_SAVE = "save with numpy.savez(file, samples=array, rate=hertz), the array channels × n"
 
 
-class NumpyRecording:
-    """An array of samples on disk, mapped or read piece by piece."""
+@dataclass(frozen=True, slots=True)
+class _Header:
+    shape: tuple[int, ...]
+    fortran: bool
+    dtype: np.dtype[Any]
+    length: int  # bytes before the samples
+
+
+class NpzRecording:
+    """An .npz or .npy file as Blocks."""
 
     def __init__(self, path: Path, options: RecordingOptions) -> None:
-        """Open it.
+        """Open; map or load the samples.
 
         Raises:
-            RecordingAbsent, RecordingRefused: see `open_recording`.
+            RecordingAbsent, RecordingRefused: not to be read, or not such a file.
         """
         self.path = path
-        self._done = 0
-        try:
-            self.bytes_total = path.stat().st_size
-            with path.open("rb") as file:
-                zipped = file.read(2) == b"PK"
-            entries = self._entries() if zipped else {"samples": self._mapped()}
-        except OSError as error:
-            raise absent(path, error) from None
-        if "samples" not in entries:
-            held = ", ".join(clean(name) for name in list(entries)[:8]) or "nothing"
-            raise refused(
-                path,
-                f"has no array named samples; it holds {held}",
-                "save it with numpy.savez(FILE, samples=…, rate=…)",
-            )
-        self._samples = self._checked(entries["samples"])
-        channels, self._sets = self._samples.shape
-        self.sets: int | None = self._sets
-        rate = options.rate
-        if rate is None and "rate" in entries:
-            rate = self._one_number(entries["rate"])
-        if rate is None:
-            raise refused(path, "does not tell its sample rate", "give it with --rate HZ")
-        names = self._texts(entries.get("names"), channels) or [
-            f"ch{n}" for n in range(1, channels + 1)
-        ]
-        units = self._texts(entries.get("units"), channels) or [""] * channels
-        self.info = StreamInfo(
-            format="npz" if zipped else "npy",
-            channels=tuple(
-                ChannelHint(
-                    name=clean(name) or f"ch{n}",
-                    unit=clean(unit, 12),
-                    gain=1.0 if unit else None,
-                    step=1.0 if self._samples.dtype.kind in "iu" else None,
+        self.bytes_total = size_of(path)
+        name = shown(path)
+        with path.open("rb") as file:
+            packed = file.read(4) == b"PK\x03\x04"
+        notes: list[str] = []
+        names: list[str] = []
+        units: list[str] = []
+        if packed:
+            said = self._open_packed(name)
+            rate = said.rate
+            names, units = said.names, said.units
+            samples = said.samples
+        else:
+            samples = _bare(path, self.bytes_total, name)
+            rate = None
+        self._samples = _channels_first(samples, name)
+        channels, sets = self._samples.shape
+        self.sets: int | None = sets
+        for what, given in (("names", names), ("units", units)):
+            if given and len(given) != channels:
+                raise refused(
+                    f"{name}: `{what}` has {len(given)} entries for {channels} channels", _SAVE
                 )
-                for n, (name, unit) in enumerate(zip(names, units, strict=True), 1)
+        if rate is None and options.rate is None:
+            raise refused(
+                f"{name} does not tell its sample rate", "tell it, for example: --rate 8000"
+            )
+        chosen = options.rate if rate is None else chosen_rate(options, rate, notes)
+        dtype = self._samples.dtype
+        whole = dtype.kind in "iu"
+        full = unique([clean(one) for one in names] or [""] * channels)
+        units = units or [""] * channels
+        self.info = StreamInfo(
+            format="npz",
+            channels=tuple(
+                ChannelHint(name=one, unit=clean(unit), gain=1.0, step=1.0 if whole else None)
+                for one, unit in zip(full, units, strict=True)
             ),
-            rate=rate,
-            sample_type=str(self._samples.dtype.newbyteorder("=")),
+            rate=chosen,
+            sample_type=f"{dtype.kind}{8 * dtype.itemsize}",
+            byte_order="big" if dtype.str[0] == ">" else "little" if dtype.itemsize > 1 else "",
+            notes=tuple(notes),
         )
+        self._done = 0
 
     def blocks(self) -> Iterator[Block]:
-        """See Recording. Sets that are no numbers part the stream later, in scaling."""
-        for at in range(0, self._sets, SETS_AT_ONCE):
-            piece = self._samples[:, at : at + SETS_AT_ONCE]
-            native = piece.astype(piece.dtype.newbyteorder("="), order="C")
-            yield Block(codes=native, index=at)
-            self._done = at + native.shape[1]
+        """Blocks in order; sets with a NaN or an infinity are gaps."""
+        placer = Placer()
+        self._done = 0
+        native = self._samples.dtype.newbyteorder("=")
+        if native.kind == "f":
+            native = np.dtype(np.float64)
+        for at in range(0, self._samples.shape[1], SETS_AT_A_TIME):
+            part = np.array(self._samples[:, at : at + SETS_AT_A_TIME], dtype=native, order="C")
+            self._done = at + part.shape[1]
+            if native.kind == "f":
+                yield from placer.place_good(part, np.asarray(np.isfinite(part).all(axis=0)))
+            else:
+                yield placer.place(part)
 
     def bytes_read(self) -> int:
-        """See Recording."""
-        return round(self.bytes_total * self._done / max(1, self._sets))
+        """How far reading has come."""
+        return round(self.bytes_total * self._done / (self.sets or 1))
 
     def close(self) -> None:
-        """See Recording."""
+        """Let go of the file: what was mapped goes with the last Block of it."""
+        self._samples = self._samples[:, :0].copy()
 
-    def _mapped(self) -> np.ndarray[Any, np.dtype[Any]]:
-        """An .npy file as a map; its header is compared with its size first."""
-        with self.path.open("rb") as file:
-            self._compare(file, self.bytes_total, self.path.name)
-        try:
-            mapped: np.ndarray[Any, np.dtype[Any]] = np.load(
-                self.path, mmap_mode="r", allow_pickle=False
-            )
-        except (ValueError, EOFError) as error:
-            raise refused(self.path, f"is no readable array ({clean(str(error), 100)})") from None
-        return mapped
-
-    def _entries(self) -> dict[str, np.ndarray[Any, np.dtype[Any]]]:
-        """The arrays of an .npz that matter; each header is compared with its size first."""
-        entries: dict[str, np.ndarray[Any, np.dtype[Any]]] = {}
+    def _open_packed(self, name: str) -> "_Said":
         try:
             with zipfile.ZipFile(self.path) as archive:
-                for item in archive.infolist():
-                    name = item.filename.removesuffix(".npy")
-                    if name not in ("samples", "rate", "names", "units"):
-                        entries.setdefault(name, np.empty(0))
-                        continue
-                    with archive.open(item) as file:
-                        self._compare(file, item.file_size, item.filename)
-                    with archive.open(item) as file:
-                        entries[name] = np.lib.format.read_array(file, allow_pickle=False)
-        except zipfile.BadZipFile:
+                members = {info.filename: info for info in archive.infolist()}
+                if "samples.npy" not in members:
+                    there = ", ".join(clean(one, 20) for one in list(members)[:6]) or "nothing"
+                    raise refused(f"{name} has no array `samples`; it holds {there}", _SAVE)
+                said = _Said(
+                    samples=_member(self.path, archive, members["samples.npy"], name),
+                    rate=_rate(archive, members, name),
+                    names=_words(archive, members, "names", name),
+                    units=_words(archive, members, "units", name),
+                )
+        except (zipfile.BadZipFile, zlib.error, EOFError, NotImplementedError, RuntimeError) as e:
             raise refused(
-                self.path, "is a damaged archive", "copy it again from its source"
+                f"{name} is damaged: {clean(str(e), 80)}",
+                "copy it again; a cut .npz cannot be read",
             ) from None
-        except (ValueError, EOFError, zipfile.zlib.error) as error:  # type: ignore[attr-defined]
-            raise refused(
-                self.path, f"holds an array that cannot be read ({clean(str(error), 100)})"
-            ) from None
-        return entries
+        return said
 
-    def _compare(self, file: IO[bytes], size: int, name: str) -> None:
-        """Refuse a header that promises more than there is, before memory is asked for."""
-        try:
-            if file.read(6) != b"\x93NUMPY":
-                raise ValueError("no array header")
-            major = file.read(2)[0]
-            width = 2 if major == 1 else 4
-            length = int.from_bytes(file.read(width), "little")
-            if length > 1 << 16:
-                raise ValueError("a header of over 64 kB")
-            header = ast.literal_eval(file.read(length).decode("latin-1").strip())
-            dtype = np.dtype(header["descr"])
-            promised = (
-                int(np.prod([int(n) for n in header["shape"]], dtype=object)) * dtype.itemsize
-            )
-        except (ValueError, SyntaxError, KeyError, IndexError, TypeError) as error:
-            raise refused(
-                self.path, f"holds no array in {clean(name)} ({clean(str(error), 80)})"
-            ) from None
-        if dtype.hasobject:
-            raise refused(
-                self.path, "holds Python objects, which are not opened", "save plain numbers"
-            )
-        if promised > size:
-            raise damaged(
-                self.path,
-                f"promises {promised} bytes in {clean(name)} and has {size}",
-                "copy it again from its source",
-            )
 
-    def _checked(self, samples: np.ndarray[Any, np.dtype[Any]]) -> np.ndarray[Any, np.dtype[Any]]:
-        if samples.dtype.kind not in "iuf":
-            raise refused(self.path, f"holds {samples.dtype}, not numbers", "save plain numbers")
-        if samples.ndim == 1:
-            samples = samples[None, :]
-        if samples.ndim != 2:
-            raise refused(
-                self.path, f"has samples of {samples.ndim} dimensions", "save channels x n"
-            )
-        if samples.shape[0] > MOST_CHANNELS and samples.shape[1] <= MOST_CHANNELS:
-            samples = samples.T  # saved the other way round
-        if samples.shape[0] > MOST_CHANNELS:
-            raise refused(self.path, f"has {samples.shape[0]} channels", "save channels x n")
-        if samples.shape[0] == 0 or samples.shape[1] == 0:
-            raise refused(self.path, "holds no sample")
-        return samples
+@dataclass(frozen=True, slots=True, eq=False)
+class _Said:
+    samples: npt.NDArray[Any]
+    rate: float | None
+    names: list[str]
+    units: list[str]
 
-    def _one_number(self, array: np.ndarray[Any, np.dtype[Any]]) -> float:
-        rate = float(array.ravel()[0]) if array.size == 1 and array.dtype.kind in "iuf" else -1.0
-        if not 0.0 < rate < 1e9:
-            raise refused(self.path, "has a rate that is no number above 0", "give --rate HZ")
-        return rate
 
-    def _texts(
-        self, array: np.ndarray[Any, np.dtype[Any]] | None, channels: int
-    ) -> list[str] | None:
-        if array is None:
-            return None
-        texts = [str(text) for text in array.ravel().tolist()]
-        if len(texts) != channels:
+def _bare(path: Path, size: int, name: str) -> npt.NDArray[Any]:
+    with path.open("rb") as file:
+        head = _header(file, name)
+    _believe(head, size, name)
+    return _map(path, head, 0)
+
+
+def _header(file: BinaryIO, name: str) -> _Header:
+    """The header of an array.
+
+    Raises:
+        RecordingRefused: no header, or of objects.
+    """
+    try:
+        version = np.lib.format.read_magic(file)
+        if version == (1, 0):
+            shape, fortran, dtype = np.lib.format.read_array_header_1_0(file)
+        elif version == (2, 0):
+            shape, fortran, dtype = np.lib.format.read_array_header_2_0(file)
+        else:
+            raise ValueError(f"array format {version[0]}.{version[1]}")
+    except (ValueError, SyntaxError, TypeError, RecursionError, MemoryError) as error:
+        raise refused(
+            f"{name} does not hold a plain NumPy array: {clean(str(error), 80)}", _SAVE
+        ) from None
+    if dtype.hasobject:
+        raise refused(f"{name} holds Python objects, which are not opened for safety", _SAVE)
+    return _Header(shape, fortran, dtype, file.tell())
+
+
+def _believe(head: _Header, size: int, name: str) -> None:
+    """Refuse a header that promises more than there is."""
+    want = head.dtype.itemsize
+    for side in head.shape:
+        want *= side  # plain integers: no overflow
+    if want != size - head.length:
+        raise refused(
+            f"{name}: its header promises {want} bytes of samples, {size - head.length} are there",
+            "copy the file again; it is cut or damaged",
+        )
+
+
+def _map(path: Path, head: _Header, offset: int) -> npt.NDArray[Any]:
+    if 0 in head.shape:
+        return np.empty(head.shape, head.dtype)
+    return np.memmap(
+        path, head.dtype, "r", offset + head.length, head.shape, "F" if head.fortran else "C"
+    )
+
+
+def _member(
+    path: Path, archive: zipfile.ZipFile, info: zipfile.ZipInfo, name: str
+) -> npt.NDArray[Any]:
+    with archive.open(info) as stream:
+        head = _header(stream, name)  # type: ignore[arg-type]  # reads as a binary file does
+        _believe(head, info.file_size, name)
+        if info.compress_type == zipfile.ZIP_STORED:
+            return _map(path, head, _begin(path, info, name))
+        if info.file_size > MOST_UNPACKED:
             raise refused(
-                self.path, f"names {len(texts)} channels or units and holds {channels} channels"
+                f"{name} would unpack to {info.file_size / 1e9:.1f} GB",
+                "save it uncompressed with numpy.savez, then any length is read",
             )
-        return texts
+        data = stream.read(info.file_size)
+    flat = np.frombuffer(data, head.dtype, count=int(np.prod(head.shape)))
+    return flat.reshape(head.shape, order="F" if head.fortran else "C")
+
+
+def _begin(path: Path, info: zipfile.ZipInfo, name: str) -> int:
+    """Where a stored member's bytes begin: its local header has two fields of variable length."""
+    with path.open("rb") as file:
+        file.seek(info.header_offset)
+        local = file.read(30)
+        if len(local) < 30 or local[:4] != b"PK\x03\x04":
+            raise refused(f"{name} is damaged at byte {info.header_offset}", "copy it again")
+        names, extra = struct.unpack("<HH", local[26:30])
+    begin = int(info.header_offset) + 30 + int(names) + int(extra)
+    if begin + info.file_size > path.stat().st_size:
+        raise refused(f"{name} is cut short", "copy it again")
+    return begin
+
+
+def _small(archive: zipfile.ZipFile, info: zipfile.ZipInfo, name: str) -> npt.NDArray[Any]:
+    """A small member, loaded. 1 MB is far beyond any list of names."""
+    if info.file_size > 1 << 20:
+        raise refused(
+            f"{name}: {clean(info.filename)} is too large to be what its name says", _SAVE
+        )
+    file = io.BytesIO(archive.read(info))
+    head = _header(file, name)
+    _believe(head, info.file_size, name)
+    return np.frombuffer(file.read(), head.dtype, count=int(np.prod(head.shape)))
+
+
+def _rate(archive: zipfile.ZipFile, members: dict[str, zipfile.ZipInfo], name: str) -> float | None:
+    if "rate.npy" not in members:
+        return None
+    value = _small(archive, members["rate.npy"], name)
+    if value.size != 1 or value.dtype.kind not in "iuf":
+        raise refused(f"{name}: `rate` is not one number", _SAVE)
+    rate = float(value[0])
+    if not (np.isfinite(rate) and rate > 0.0):
+        raise refused(f"{name}: `rate` is {rate:g}, not a number above 0", _SAVE)
+    return rate
+
+
+def _words(
+    archive: zipfile.ZipFile, members: dict[str, zipfile.ZipInfo], what: str, name: str
+) -> list[str]:
+    if f"{what}.npy" not in members:
+        return []
+    value = _small(archive, members[f"{what}.npy"], name)
+    if value.dtype.kind not in "US":
+        raise refused(f"{name}: `{what}` is not a list of texts", _SAVE)
+    return [
+        one.decode("utf-8", "replace") if isinstance(one, bytes) else str(one)
+        for one in value.tolist()
+    ]
+
+
+def _channels_first(samples: npt.NDArray[Any], name: str) -> npt.NDArray[Any]:
+    if samples.dtype.kind not in "iuf" or samples.dtype.itemsize > 8:
+        raise refused(f"{name}: `samples` are {samples.dtype}, not plain numbers", _SAVE)
+    if samples.ndim == 1:
+        samples = samples[None, :]
+    if samples.ndim != 2 or samples.size == 0:
+        shape = " × ".join(map(str, samples.shape)) or "a single number"
+        raise refused(f"{name}: `samples` is {shape}, not channels × n with something in it", _SAVE)
+    if samples.shape[0] > MOST_CHANNELS or samples.shape[0] > max(8, 4 * samples.shape[1]):
+        raise refused(
+            f"{name}: `samples` is {samples.shape[0]} × {samples.shape[1]}, which reads as"
+            f" {samples.shape[0]} channels of {samples.shape[1]} samples",
+            "channels come first: save samples.T",
+        )
+    return samples

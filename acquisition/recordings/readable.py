@@ -6,9 +6,12 @@ Every refusal is one sentence (what, and where) with the advice as notes.
 import os
 import stat
 from pathlib import Path
+from typing import TypeVar
 
 from acquisition.errors import RecordingAbsent, RecordingDamaged, RecordingError, RecordingRefused
 from acquisition.stream import clean
+
+E = TypeVar("E", bound=RecordingError)
 
 
 def shown(path: Path) -> str:
@@ -62,6 +65,15 @@ def size_of(path: Path) -> int:
     return status.st_size
 
 
+def beside(path: Path, suffix: str) -> Path | None:
+    """The file of the same name with another suffix, in small or capital letters; None: none."""
+    for spelled in (suffix, suffix.upper(), suffix.capitalize()):
+        candidate = path.with_suffix(spelled)
+        if candidate.is_file():
+            return candidate
+    return None
+
+
 def unreadable(path: Path, error: OSError) -> RecordingError:
     """What to raise when reading stops on a fault of the disk or its connection."""
     reason = error.strerror or os.strerror(error.errno or 0)
@@ -82,7 +94,7 @@ def _absent(path: Path) -> RecordingAbsent:
     return error
 
 
-def _noted[E: RecordingError](error: E, advice: tuple[str, ...]) -> E:
+def _noted(error: E, advice: tuple[str, ...]) -> E:
     for note in advice:
         error.add_note(note)
     return error

@@ -78,7 +78,9 @@ class WavRecording:
         self.info = StreamInfo(
             format="wav",
             channels=tuple(
-                float_hint(one, scale.get(one)) if floating else pcm_hint(one, bits, scale.get(one))
+                float_hint(one, scale.get(one))
+                if floating
+                else pcm_hint(one, bits, scale.get(one), unsigned=bits == 8)  # as WAV has it
                 for one in names
             ),
             rate=chosen_rate(options, float(head.rate), notes),
@@ -104,7 +106,7 @@ class WavRecording:
             codes = _codes(data[: got * self._frame], self._head)
             self._done += len(data)
             if codes.dtype.kind == "f":
-                yield from placer.place_good(codes, np.isfinite(codes).all(axis=0))
+                yield from placer.place_good(codes, np.asarray(np.isfinite(codes).all(axis=0)))
             elif got:
                 yield placer.place(codes)
             if got < want:
@@ -122,14 +124,13 @@ class WavRecording:
         self._file.close()
 
 
-def pcm_hint(name: str, bits: int, full: float | None) -> ChannelHint:
+def pcm_hint(name: str, bits: int, full: float | None, *, unsigned: bool = False) -> ChannelHint:
     """A channel of integer codes; `full` is what full scale (code 32768 of 16 bits) means."""
     half = 1 << (bits - 1)
-    unsigned = bits == 8  # WAV keeps 8 bits unsigned, all others signed
     return ChannelHint(
         name=name,
         gain=None if full is None else full / half,
-        offset_codes=-half if unsigned else 0.0,
+        offset_codes=-float(half) if unsigned else 0.0,
         rails=(0, 2 * half - 1) if unsigned else (-half, half - 1),
         step=1.0,
     )
