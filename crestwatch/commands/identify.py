@@ -33,10 +33,10 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Listen, decide, print."""
-    from crestwatch import compose
+    from crestwatch.compose import finding
 
     source = parse_source(options.source)
-    found = compose.identify(source, options.length, options.baud)
+    found = finding.identify(source, options.length, options.baud)
     if options.json:
         sys.stdout.write(json.dumps(found, ensure_ascii=False, allow_nan=False) + "\n")
     else:

@@ -36,12 +36,13 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Measure and print."""
-    from crestwatch import compose
+    from crestwatch.compose.measuring import open_measuring
+    from crestwatch.compose.sources import setup_for
     from crestwatch.output import CsvOutput, JsonLinesOutput, PlainOutput, TableOutput
     from crestwatch.progress import Progress
 
-    setup = compose.setup_for(options.setup, options.nominal, options.limit)
-    measuring = compose.open_measuring(
+    setup = setup_for(options.setup, options.nominal, options.limit)
+    measuring = open_measuring(
         options.recording, setup, options.rate, dict(options.scale), options.format
     )
     out = sys.stdout

@@ -19,9 +19,9 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Print the list; an empty one is an answer too."""
-    from crestwatch import compose
+    from crestwatch.compose import finding
 
-    found = compose.ports()
+    found = finding.ports()
     if options.json:
         sys.stdout.write(json.dumps({"ports": found}, ensure_ascii=False) + "\n")
         return diagnostics.DONE

@@ -45,17 +45,18 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Serve until interrupted."""
-    from crestwatch import compose
+    from crestwatch.compose.serving import serve
+    from crestwatch.compose.sources import logger_spec, scene_list
 
     if options.list:
-        for name, title, description in compose.scene_list():
+        for name, title, description in scene_list():
             sys.stdout.write(f"{name:<10} {title}\n           {description}\n")
         return diagnostics.DONE
     if options.scene is None:
         error = diagnostics.UsageError("name a SCENE to simulate")
         error.add_note("`crestwatch simulate --list` tells which there are")
         raise error
-    spec = compose.logger_spec(
+    spec = logger_spec(
         options.scene,
         wire=options.wire,
         rate=options.rate,
@@ -71,6 +72,6 @@ def run(options: argparse.Namespace) -> int:
         sys.stdout.flush()
         diagnostics.note(f"connect with: crestwatch watch {address}   (Ctrl+C stops)")
 
-    sent = compose.serve(spec, options.on, options.speed, options.length, announce)
+    sent = serve(spec, options.on, options.speed, options.length, announce)
     diagnostics.note(sent)
     return diagnostics.DONE

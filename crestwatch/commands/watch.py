@@ -7,9 +7,13 @@ was lost. Leave with q, or Ctrl+C in the plain forms.
 import argparse
 import sys
 import time
+from typing import TYPE_CHECKING
 
 from crestwatch import arguments, diagnostics
 from crestwatch.source import GRAMMAR, parse_source
+
+if TYPE_CHECKING:
+    from crestwatch.compose.watching import Watch
 
 EXAMPLES = f"""\
 {GRAMMAR}
@@ -59,11 +63,12 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 def run(options: argparse.Namespace) -> int:
     """Watch until told to stop or the source ends."""
-    from crestwatch import compose
+    from crestwatch.compose import watching
+    from crestwatch.compose.sources import setup_for
 
     source = parse_source(options.source)
-    setup = compose.setup_for(options.setup, options.nominal, options.limit)
-    watch = compose.open_watch(
+    setup = setup_for(options.setup, options.nominal, options.limit)
+    watch = watching.open_watch(
         source,
         options.source,
         setup,
@@ -77,11 +82,11 @@ def run(options: argparse.Namespace) -> int:
     with watch:
         if options.plain or options.json_lines or not sys.stdout.isatty():
             return _print(watch, options)
-        compose.show_screen(watch, options.theme, options.glyphs, options.length)
+        watching.show_screen(watch, options.theme, options.glyphs, options.length)
         return watch.outcome()
 
 
-def _print(watch: "compose.Watch", options: argparse.Namespace) -> int:  # noqa: F821
+def _print(watch: "Watch", options: argparse.Namespace) -> int:
     from crestwatch.output import JsonLinesOutput, Output, PlainOutput
     from shift.wording import CAUTION_TITLE, CAUTIONS
 
@@ -107,7 +112,7 @@ def _print(watch: "compose.Watch", options: argparse.Namespace) -> int:  # noqa:
         remarked = problem
         if options.length is None:
             return False
-        return now - began >= options.length or live.snapshot.seconds >= options.length
+        return bool(now - began >= options.length or live.snapshot.seconds >= options.length)
 
     try:
         for batch in live.batches(over):

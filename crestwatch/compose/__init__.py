@@ -1,0 +1,1 @@
+"""The only joiner of rooms: picks concrete parts and hands them to each other."""
