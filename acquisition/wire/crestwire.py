@@ -163,7 +163,7 @@ class CrestwireDecoder:
         if kind == Kind.DATA and not self._fits(body, channels, code, count, boot):
             self._count_bad(unit)
             return at
-        placed = self._ledger.place(boot, sequence, index, tick, arrived)
+        placed = self._ledger.place(boot, sequence, index, tick, body[-4:], arrived)
         if placed is None:
             return at
         self._lost_before += placed.lost
@@ -230,7 +230,7 @@ class CrestwireDecoder:
             frames += 1
             said |= f
             tick = t
-            recent((s, t))
+            recent((s, body[-4:]))
             at += 1
         self.frames += frames
         position = ledger.position

@@ -51,7 +51,9 @@ class Ledger:
         self.tail_unknown = 0
         self.constant_boot_id = False  # a reboot was seen under the same id
         self.tick_hz = DEFAULT_TICK_HZ
-        self.recent: deque[tuple[int, int]] = deque(maxlen=RECENT)  # (sequence, tick)
+        # Sequence and CRC. With sequence and clock alone, a board that boots again under the same
+        # id would look like its own first frames repeated; the noise in its samples tells.
+        self.recent: deque[tuple[int, bytes]] = deque(maxlen=RECENT)
         self._declared_rate: float | None = None
         self._tick = 0  # unwrapped, of the set at _tick_position
         self._tick_position = 0
@@ -72,16 +74,21 @@ class Ledger:
             self._declared_rate = rate
 
     def place(
-        self, boot: int, sequence: int, index: int, tick: int, arrived: float
+        self, boot: int, sequence: int, index: int, tick: int, crc: bytes, arrived: float
     ) -> Placed | None:
         """Enter a good frame of any kind; None when it is a repeated one."""
+        if boot == self.boot and (sequence, crc) in self.recent:
+            self.duplicates += 1
+            return None
+        placed = self._place(boot, sequence, index, tick, arrived)
+        self.recent.append((sequence, crc))
+        return placed
+
+    def _place(self, boot: int, sequence: int, index: int, tick: int, arrived: float) -> Placed:
         if self.boot is None:
             self.boot = boot
             return self._begin_boot(sequence, index, tick, arrived, lost=0, reboot=False)
         if boot == self.boot:
-            if (sequence, tick) in self.recent:
-                self.duplicates += 1
-                return None
             missed = (sequence - self.sequence) % SEQUENCE_SPAN
             gap = (index - self.index) % INDEX_SPAN
             if missed == 0 and gap == 0:
@@ -142,7 +149,6 @@ class Ledger:
         self.sequence = (sequence + 1) % SEQUENCE_SPAN
         self._heard = arrived
         self._unwrap(tick, self.position)
-        self.recent.append((sequence, tick))
         return Placed(lost, discarded, False, self._tick)
 
     def _unwrap(self, tick: int, position: int) -> None:
@@ -177,7 +183,6 @@ class Ledger:
         self, sequence: int, index: int, tick: int, arrived: float, *, lost: int, reboot: bool
     ) -> Placed:
         self.recent.clear()
-        self.recent.append((sequence, tick))
         self.sequence = (sequence + 1) % SEQUENCE_SPAN
         self.index = index
         self._tick = tick
