@@ -16,6 +16,7 @@ class ChannelHint:
     offset_codes: float = 0.0
     rails: tuple[float, float] | None = None  # lowest and highest code of the converter
     skew_s: float = 0.0  # sampled this much later than channel 0
+    u_offset_codes: float = 0.0  # standard uncertainty of the zero, when it was assumed
     step: float | None = None  # code step, 1 for a converter; None when the values are continuous
 
 

@@ -171,6 +171,6 @@ def _channel(said: ChannelSetup, hint: ChannelHint) -> Channel:
         low=low,
         high=high,
         u_gain=said.u_gain,
-        u_offset=said.u_offset,
+        u_offset=said.u_offset or abs(gain) * hint.u_offset_codes,
         delay=said.delay or hint.skew_s,
     )

@@ -16,11 +16,13 @@ import numpy as np
 from acquisition.block import Block
 from acquisition.clock import ClockEstimate
 from acquisition.status import LinkState, ReaderStatus
+from acquisition.stream import StreamInfo
 from dsp.meters import MeterCard
 from dsp.verdict import JUDGEMENTS, Judgement
 from dsp.window import Window
 from rig.channels import advice
 from rig.setup import Setup
+from rig.zero import ENOUGH, needs_zero, with_zero
 from shift.engine import Batch, Engine
 from shift.event import Event
 from shift.snapshot import ChannelView, Snapshot, Stage, Trend
@@ -76,6 +78,7 @@ class Live:
         self._window: Window | None = None
         self._events: deque[Event] = deque(maxlen=EVENTS_KEPT)
         self._last_batch: Batch | None = None
+        self.info: StreamInfo | None = None  # with the zeros that had to be assumed
         self.summaries: tuple[Summary, ...] = ()
         self.failure: Exception | None = None
         self.snapshot = Snapshot(
@@ -175,7 +178,13 @@ class Live:
             return False
         self._rate = rate
         if self._engine is None:
+            if needs_zero(self._plan.setup, info):
+                if patience and sum(b.sets for b in self._waiting) < ENOUGH * rate:
+                    return False
+                codes = np.concatenate([block.codes for block in self._waiting], axis=1)
+                info = with_zero(self._plan.setup, info, codes)
             self._engine = Engine(self._plan.setup, info, self._plan.cards)
+            self.info = info
             self.summaries = tuple(Summary(c) for c in self._engine.channels)
             self._trends = [deque(maxlen=TREND_POINTS) for _ in self._engine.channels]
             self._views = tuple(
@@ -264,6 +273,7 @@ class Live:
             pairs=batch.pairs(len(batch.readings) - 1) if batch is not None else (),
             events=tuple(self._events),
             advice=status.advice
+            + (self.info.notes if self.info is not None else ())
             + (advice(self._plan.setup, engine.channels) if engine is not None else ()),
             limit=self._plan.setup.limit,
             nominal=engine.nominal if engine is not None else self._plan.setup.nominal_hz,

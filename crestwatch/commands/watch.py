@@ -117,11 +117,11 @@ def _print(watch: "Watch", options: argparse.Namespace) -> int:
     try:
         for batch in live.batches(over):
             if not introduced:
-                engine, info = live.engine, watch.status().info
+                engine, info = live.engine, live.info
                 assert engine is not None
                 assert info is not None
                 output.begin(options.source, info, live.rate or 0.0, engine)
-                for sentence in (*info.notes, *live.snapshot.advice):
+                for sentence in live.snapshot.advice:
                     diagnostics.note(sentence)
                 introduced = True
             output.batch(batch)

@@ -13,6 +13,7 @@ from acquisition.stream import StreamInfo
 from crestwatch.compose.sources import recording
 from dsp.meters import BUILT_IN
 from rig.setup import Setup
+from rig.zero import needs_zero, with_zero
 from shift.engine import Batch, Engine
 from shift.summary import Summary, with_run
 
@@ -24,10 +25,15 @@ class Measuring:
         declared = rate or setup.rate_hz or recording.info.rate
         assert declared is not None  # every opened recording has a rate
         self.rate: float = declared
-        self.info: StreamInfo = recording.info
-        self.engine = Engine(setup, recording.info, BUILT_IN)
+        info = recording.info
+        if needs_zero(setup, info):
+            first = next(recording.blocks(), None)
+            if first is not None:
+                info = with_zero(setup, info, first.codes)
+        self.info: StreamInfo = info
+        self.engine = Engine(setup, info, BUILT_IN)
         self.summaries = tuple(Summary(channel) for channel in self.engine.channels)
-        self.notes = recording.info.notes
+        self.notes = info.notes
         self.bytes_total = recording.bytes_total
         self.damage: RecordingError | None = None
         self._recording = recording
