@@ -23,7 +23,8 @@ LEARN_LIMIT = 512
 DIGITS = 15
 LOST_SHAPE = 100  # lines off the shape in a row, before it is said aloud
 NUMBER_BEGINS = tuple(bytes([c]) for c in b"+-.0123456789")
-COMMA, NEWLINE, POINT = ord(","), ord("\n"), ord(".")
+COMMA, NEWLINE, POINT, NINE, SLASH = ord(","), ord("\n"), ord("."), ord("9"), ord("/")
+PLUS, MINUS = ord("+"), ord("-")
 
 
 class TextDecoder:
@@ -101,6 +102,7 @@ class TextDecoder:
             self._tally["bad"] += 1
             self._gap = True
             self._overlong = False
+            self._first_line = False
             whole = whole[end:]
         if b"\n\n" in whole or whole[:1] == b"\n":
             whole = re.sub(rb"\n+", b"\n", whole).lstrip(b"\n")
@@ -323,6 +325,11 @@ def _fast(
     text: bytes, letters: npt.NDArray[np.uint8], marks: npt.NDArray[np.intp]
 ) -> npt.NDArray[np.generic] | None:
     """All numbers at once, or None when numpy refuses one."""
+    signs = np.flatnonzero((letters == PLUS) | (letters == MINUS))
+    if len(signs):
+        after_sign = letters[signs + 1]  # a newline at the end is always there
+        if ((after_sign < POINT) | (after_sign > NINE) | (after_sign == SLASH)).any():
+            return None  # numpy reads a sign alone as 0
     points = np.flatnonzero(letters == POINT)
     decimals = 0
     if len(points):
@@ -331,7 +338,7 @@ def _fast(
             return _from_text(text, np.float64)
         after = marks - points - 1
         decimals = int(after[0])
-        if decimals < 0 or (after != decimals).any():
+        if decimals < 1 or (after != decimals).any():
             return _from_text(text, np.float64)
         text = text.translate(None, b".")
     values = _from_text(text, np.int64)
