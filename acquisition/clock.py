@@ -108,7 +108,8 @@ class ClockFit:
         offset = y0 - slope * x0
         self._line = (slope, offset)
         minima = self._minima(slope, offset)
-        # Covered the true rate in 95 to 100 % of simulated runs of every delay model tried.
+        # Covered the true rate in 98 % of 1200 simulated runs of five delay models; at worst in
+        # 80 %, after 3 s behind a bridge that holds data for two frames and beats with them.
         u = 2.0 * (max(minima) - min(minima)) / span if len(minima) >= 3 else math.inf
         rate = 1.0 / slope
         ppm = (rate / self.declared - 1.0) * 1e6 if self.declared else None

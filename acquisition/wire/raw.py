@@ -15,7 +15,10 @@ from acquisition.stream import ChannelHint, StreamInfo
 
 UNIT_SETS = 256  # 32 ms at 8 kS/s: how late a loss may be seen
 LOOK_SETS = 16  # sets at a unit's end that are looked at; an offset lasts once it is there
-CALM = 24.0  # mean step of a high byte that no true signal of 20 samples a cycle reaches
+CALM = 2.0  # mean step of high bytes above which a unit is looked at closely
+SWAPPED = 1.5  # high bytes that step so much more than low ones are not high bytes
+STRIDE = 16  # every so many sets tell where a channel lies
+EPOCH = 1024  # units after which what is usual is learned afresh
 WORD = 2
 LEARN_UNITS = 8  # units from which each channel's usual place and spread are taken
 PLAIN = {
@@ -43,6 +46,7 @@ class RawDecoder:
         self._set_bytes = WORD * channels
         self._unit_bytes = UNIT_SETS * self._set_bytes
         self._tail = b""
+        self._skip = 0  # bytes still to be left out
         self._position = 0
         self._gap = False
         self._flags = BlockFlag.NONE
@@ -51,7 +55,8 @@ class RawDecoder:
         self._bytes = 0
         self._reconnects = 0
         self._usual: npt.NDArray[np.float64] | None = None  # (channels, 2): mean and spread
-        self._learned: list[npt.NDArray[np.float64]] = []
+        self._learned = 0  # units that _sum is of
+        self._sum = np.zeros((channels, 2))
         self.problem = ""
         hints = tuple(ChannelHint(name=f"ch{c + 1}", step=1.0) for c in range(channels))
         self.info: StreamInfo | None = StreamInfo(
@@ -78,6 +83,11 @@ class RawDecoder:
     def feed(self, data: bytes, arrived: float) -> list[Block]:
         """Decode the units that are whole by now."""
         held = self._tail + data if self._tail else data
+        if self._skip:
+            dropped = min(self._skip, len(held))
+            self._skip -= dropped
+            self._bytes += dropped
+            held = held[dropped:]
         units = len(held) // self._unit_bytes
         blocks: list[Block] = []
         at = 0
@@ -88,7 +98,11 @@ class RawDecoder:
                 self._emit(view[: good * self._unit_bytes], arrived, blocks)
                 at += good * self._unit_bytes
             if good < units:
-                at += self._realign(held[at : at + self._unit_bytes])
+                skip = self._realign(held[at : at + self._unit_bytes])
+                dropped = min(skip, len(held) - at)
+                self._skip = skip - dropped
+                self._bytes += dropped
+                at += dropped
             units = (len(held) - at) // self._unit_bytes
         self._tail = held[at:]
         return blocks
@@ -97,6 +111,7 @@ class RawDecoder:
         """The link is back; a byte may be missing, which the next units will show."""
         self._bytes += len(self._tail)
         self._tail = b""
+        self._skip = 0
         self._gap = True
         self._flags |= BlockFlag.RECONNECT
         self._reconnects += 1
@@ -113,74 +128,90 @@ class RawDecoder:
 
     def _calm_units(self, units: npt.NDArray[np.uint8]) -> int:
         """How many units from the first on look right."""
-        ends = units[:, -LOOK_SETS:, :, self._high]
-        steps = np.diff(ends, axis=1).view(np.int8)
-        rough = np.abs(steps.astype(np.int16)).mean(axis=(1, 2))
-        wrong = rough > CALM
-        for k in np.flatnonzero(wrong).tolist():
-            if self._swapped(units[k]):
-                return int(k)
-        if self._channels == 1:
-            return len(units)
-        for k in range(len(units)):
-            if self._moved(units[k]):
-                return k
-        return len(units)
+        good = len(units)
+        rough = _steps(units[:, -LOOK_SETS:, :, self._high])
+        suspect = np.flatnonzero(rough > CALM)
+        if len(suspect):
+            tails = units[suspect, -4 * LOOK_SETS :]
+            high, low = _steps(tails[..., self._high]), _steps(tails[..., 1 - self._high])
+            swapped = suspect[high > SWAPPED * low]
+            if len(swapped):
+                good = int(swapped[0])
+        if self._channels == 1 or not good:
+            return good
+        return self._unmoved(self._places(units[:good, ::STRIDE]))
 
-    def _swapped(self, unit: npt.NDArray[np.uint8]) -> bool:
-        """Whether, at the unit's end, high bytes jump about more than low ones."""
-        tail = unit[-4 * LOOK_SETS :]
-        steps = np.abs(np.diff(tail, axis=0).view(np.int8).astype(np.int16)).mean(axis=(0, 1))
-        return bool(steps[self._high] > 1.5 * steps[1 - self._high])
+    def _unmoved(self, places: npt.NDArray[np.float64]) -> int:
+        """How many of these units have each channel where it was; learns where that is.
 
-    def _moved(self, unit: npt.NDArray[np.uint8]) -> bool:
-        """Whether the channels have changed places against what was learned."""
-        words = unit.reshape(UNIT_SETS, self._set_bytes).view(self._kind).astype(np.float64)
-        spread = np.stack((words.mean(axis=0), words.std(axis=0)), axis=1)
-        if self._usual is None:
-            self._learned.append(spread)
-            if len(self._learned) == LEARN_UNITS:
-                self._usual = np.median(self._learned, axis=0)
-                self._learned = []
-            return False
-        usual = self._usual
-        here = _distance(spread, usual)
-        shifted = min(
-            _distance(np.roll(spread, turn, axis=0), usual) for turn in range(1, self._channels)
+        What is usual changes only at every EPOCH-th unit, so that slicing changes nothing.
+        """
+        done = 0
+        while done < len(places):
+            wanted = LEARN_UNITS if self._usual is None else EPOCH
+            here = places[done : done + wanted - self._learned]
+            if self._usual is not None:
+                moved = np.flatnonzero(self._have_moved(here, self._usual))
+                if len(moved):
+                    self._learn(here[: moved[0]])
+                    return done + int(moved[0])
+            self._learn(here)
+            done += len(here)
+            if self._learned == wanted:
+                found = self._sum / wanted
+                self._usual = found if self._usual is None else 0.5 * (self._usual + found)
+                self._learned, self._sum = 0, np.zeros_like(found)
+        return done
+
+    def _learn(self, places: npt.NDArray[np.float64]) -> None:
+        self._learned += len(places)
+        self._sum = self._sum + places.sum(axis=0)
+
+    def _have_moved(
+        self, places: npt.NDArray[np.float64], usual: npt.NDArray[np.float64]
+    ) -> npt.NDArray[np.bool_]:
+        """Whether units fit far better with their channels turned by some places."""
+        here = np.abs(places - usual).sum(axis=(1, 2))
+        turned = np.min(
+            [
+                np.abs(np.roll(places, turn, axis=1) - usual).sum(axis=(1, 2))
+                for turn in range(1, self._channels)
+            ],
+            axis=0,
         )
-        if here <= 0.25 * _distance(np.roll(usual, 1, axis=0), usual):
-            self._usual = usual + 0.05 * (spread - usual)  # a load that changes slowly
-            return False
-        return shifted < 0.25 * here
+        moved: npt.NDArray[np.bool_] = turned < 0.25 * here
+        return moved
+
+    def _places(self, octets: npt.NDArray[np.uint8]) -> npt.NDArray[np.float64]:
+        """(units, sets, channels, 2) bytes to mean and spread, (units, channels, 2)."""
+        words = np.ascontiguousarray(octets).view(self._kind)[..., 0].transpose(0, 2, 1)
+        x = words.astype(np.float32, order="C")  # sets last: numpy sums along memory
+        origin = x[..., :1].copy()
+        x -= origin
+        mean = x.mean(axis=-1, dtype=np.float64)
+        power = np.einsum("ucs,ucs->uc", x, x) / x.shape[-1]
+        spread = np.sqrt(np.maximum(power - mean * mean, 0.0))
+        return np.stack((mean + origin[..., 0], spread), axis=2)
 
     def _realign(self, unit: bytes) -> int:
         """Leave out a unit that looks wrong; returns the bytes to step over."""
-        best, best_score = 0, np.inf
-        for shift in range(self._set_bytes):
-            score = self._misfit(
-                unit[shift + len(unit) // 2 // self._set_bytes * self._set_bytes :]
-            )
-            if score < best_score:
-                best, best_score = shift, score
-        skip = self._unit_bytes + best
+        half = len(unit) // 2 // self._set_bytes * self._set_bytes
+        scores = [self._misfit(unit[half + shift :]) for shift in range(self._set_bytes)]
         self._bad += 1
-        self._bytes += skip
         self._gap = True
         self._position += UNIT_SETS
-        return skip
+        return self._unit_bytes + int(np.argmin(scores))
 
     def _misfit(self, data: bytes) -> float:
         """How badly bytes fit when a set is taken to begin at the first of them."""
         whole = len(data) // self._set_bytes * self._set_bytes
         octets = np.frombuffer(data, np.uint8, whole).reshape(-1, self._channels, WORD)
-        high = octets[-4 * LOOK_SETS :, :, self._high]
-        rough = float(np.abs(np.diff(high, axis=0).view(np.int8).astype(np.int16)).mean())
+        tail = octets[-4 * LOOK_SETS :]
+        rough = float(_steps(tail[None, :, :, self._high])[0])
         if self._usual is None:
             return rough
-        words = np.frombuffer(data, self._kind, whole // WORD).reshape(-1, self._channels)
-        tail = words[-4 * LOOK_SETS :].astype(np.float64)
-        place = np.stack((tail.mean(axis=0), tail.std(axis=0)), axis=1)
-        return rough + _distance(place, self._usual)
+        place = self._places(tail[None])[0]
+        return rough + float(np.abs(place - self._usual).sum())
 
     def _emit(self, view: npt.NDArray[np.uint8], arrived: float, blocks: list[Block]) -> None:
         codes = view.view(self._kind).reshape(-1, self._channels).T
@@ -200,8 +231,13 @@ class RawDecoder:
         self._received += codes.shape[1]
 
 
-def _distance(a: npt.NDArray[np.float64], b: npt.NDArray[np.float64]) -> float:
-    return float(np.abs(a - b).sum())
+def _steps(octets: npt.NDArray[np.uint8]) -> npt.NDArray[np.float64]:
+    """(units, sets, channels): how far bytes step from set to set, the short way round; a mean."""
+    lying = np.ascontiguousarray(octets.transpose(0, 2, 1))
+    steps = np.diff(lying, axis=-1).view(np.int8).reshape(len(lying), -1)
+    # As unsigned, so that -128 has a magnitude.
+    means: npt.NDArray[np.float64] = np.abs(steps).view(np.uint8).mean(axis=-1, dtype=np.float64)
+    return means
 
 
 def encode_raw(
