@@ -1,213 +1,404 @@
-"""How a CSV file is laid out: separator, decimal mark, header, units, which column is time.
+"""How a table of samples is laid out: separator, decimal mark, header, units, which column is time.
 
-Guessing wrongly would measure nonsense without a word, so where two readings fit the file is
-refused and both are shown.
+Every pair of separator and decimal mark is tried on the first lines. Where two of them give
+different numbers and nothing decides between them, the file is refused and both readings are
+shown: a wrong guess would measure nonsense without a word.
 """
 
+import csv
 import re
-from dataclasses import dataclass
-from pathlib import Path
+from dataclasses import dataclass, replace
+from enum import StrEnum
+from itertools import pairwise
 
-from acquisition.recordings.faults import refused
+from acquisition.recordings.placing import unique
+from acquisition.recordings.readable import refused
 from acquisition.stream import clean
 
-TIME_UNITS = {"s": 1.0, "ms": 1e-3, "us": 1e-6, "µs": 1e-6, "μs": 1e-6, "ns": 1e-9}
-_TIME_NAME = re.compile(
-    r"(?i)^(?:time|t|zeit|temps)"
-    r"(?:[ _]*(?:\[|\()?\s*(s|ms|us|µs|μs|ns|sec|seconds?)?\s*(?:\]|\))?)?$"
-)
-_NUMBER = re.compile(r"^[+-]?(?:\d+(?:[.,]\d*)?|[.,]\d+)(?:[eE][+-]?\d+)?$")
-_ISO = re.compile(r"^\d{4}-\d\d-\d\d[T ]\d\d:\d\d")
-_BAD_CELLS = {
-    "",
-    "nan",
-    "inf",
-    "-inf",
-    "ol",
-    "-ol",
-    "o.l.",
-    "overload",
-    "n/a",
-    "na",
-    "null",
-    "-",
-    "---",
-}
-MOST_PREAMBLE = 200  # lines of an instrument's own words before the header
+
+class TimeKind(StrEnum):
+    """What stands in the time column."""
+
+    SECONDS = "seconds"  # numbers, in a unit
+    STAMP = "stamp"  # date and time as ISO 8601 text
+    CLOCK = "clock"  # time of day, perhaps with the date in a column before it
+    NUMBER = "number"  # sample numbers: they show gaps but no rate
 
 
 @dataclass(frozen=True, slots=True)
 class Layout:
-    """How to read a file's lines."""
+    """How to read the lines of one file."""
 
+    separator: str  # " " stands for any run of blanks
+    decimal: str
+    columns: int  # fields a line has, time included
+    first_line: int  # number of the first data line, from 1
+    names: tuple[str, ...]  # of the channels
+    units: tuple[str, ...]
+    time_at: int | None = None  # column of the time; CLOCK with a date: the column of the clock
+    time_kind: TimeKind | None = None
+    time_unit: float = 1.0  # s
+    trailing: bool = False  # every line ends on a separator
+    undecided: bool = False  # no number so far had a decimal mark
+    notes: tuple[str, ...] = ()
+
+    @property
+    def dated(self) -> bool:
+        """Whether a date stands in a column of its own before the clock."""
+        return self.time_kind is TimeKind.CLOCK and self.time_at == 1
+
+
+# What instruments and spreadsheets write for a sample that they do not have.
+NO_NUMBER = re.compile(
+    r"(?i)[+-]?(?:|nan|-?nan|inf|infinity|o\.?l\.?|ovl|over|overload|overflow|n/?a|null|none|err"
+    r"|error|-+|\?+|\*+|#num!|#n/a|#value!|#div/0!)$"
+)
+_NUMBER = {
+    ".": re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?$"),
+    ",": re.compile(r"[+-]?(?:\d+(?:,\d+)?|,\d+)(?:[eE][+-]?\d+)?$"),
+}
+_STAMP = re.compile(r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(?::\d\d(?:[.,]\d+)?)?\s*(?:Z|[+-]\d\d:?\d\d)?$")
+_CLOCK = re.compile(r"\d{1,2}:\d\d:\d\d(?:[.,]\d+)?$")
+_DATE = re.compile(r"\d{4}[-/]\d\d[-/]\d\d$|\d{1,2}[./-]\d{1,2}[./-]\d{2,4}$")
+_TITLE = re.compile(r"^(.*?)\s*(?:\[([^\]]*)\]|\(([^)]*)\))$")
+_SLASHED = re.compile(r"^(.+?)\s*/\s*([mkMuµμn]?(?:V|A|s))$")
+_TIME = re.compile(
+    r"(?i)^(time|t|timestamp|times|zeit|temps|tiempo|seconds?|secs?)(?:_([a-zµμ]+))?$"
+)
+_ORDINAL = re.compile(r"(?i)^(n|no\.?|nr\.?|#|index|idx|samples?|point|sample[ _](?:no|number))$")
+_UNIT_CELL = re.compile(r"^[\[(]?(?:[mkMuµμn]?(?:V|A|s|W|Hz)|sec|volts?|amp(?:ere)?s?)?[\])]?$")
+_SECONDS = {
+    "": 1.0, "s": 1.0, "sec": 1.0, "secs": 1.0, "second": 1.0, "seconds": 1.0, "ms": 1e-3,
+    "us": 1e-6, "µs": 1e-6, "μs": 1e-6, "ns": 1e-9, "min": 60.0,
+}  # fmt: skip
+
+# In this order: the first of readings that give the same numbers is taken.
+# Comma and decimal comma go together where the cells stand in quotes.
+_READINGS = [(mark, decimal) for mark in ("\t", ";", ",", " ") for decimal in (".", ",")]
+LINES_LOOKED_AT = 400
+MOST_PREAMBLE = 200  # lines
+MOST_COLUMNS = 1024
+# Of numbers with a decimal comma about one in ten has a 0 right after it.
+ENOUGH_TO_SEE_A_ZERO = 100  # lines: 0.9^100 = 3e-5
+
+
+@dataclass(frozen=True, slots=True)
+class _Fit:
     separator: str
     decimal: str
-    names: tuple[str, ...]  # of every column
-    units: tuple[str, ...]
-    time_unit: float | None  # s a unit of column 0; None: it is no time
-    iso_time: bool  # column 0 is date and time in words
-    first_line: int  # number of the first line of data, 1 the file's first
-    skipped: tuple[str, ...]  # preamble lines, cleaned
-
-    @property
-    def columns(self) -> int:
-        """How many fields a line has."""
-        return len(self.names)
-
-    @property
-    def has_time(self) -> bool:
-        """Whether column 0 is time."""
-        return self.time_unit is not None or self.iso_time
+    columns: int
+    start: int  # index of the first data line
+    rows: tuple[tuple[str, ...], ...]
+    trailing: bool
+    values: tuple[tuple[float | str, ...], ...]  # of the first rows, to compare readings
 
 
-def find_layout(lines: list[str], path: Path) -> Layout:
-    """Work the layout out from a file's first lines.
+def find_layout(lines: list[str], name: str) -> Layout:
+    """Work out the layout from the first lines of a file.
 
+    Args:
+        lines: whole lines without their ends, as many as were read.
+        name: what to call the file in a sentence.
     Raises:
-        RecordingRefused: there are no rows of numbers, or two readings fit.
+        RecordingRefused: no table, or two readings that nothing decides between.
     """
-    rows = [line for line in lines if line.strip()]
-    if not rows:
-        raise refused(path, "holds no line of text", "record again")
-    best: tuple[int, str] | None = None
-    for separator in ("\t", ";", ","):
-        run = _longest_run(lines, separator)
-        if run >= 1 and (best is None or run > best[0]):
-            best = (run, separator)
-    if best is None:
-        raise refused(
-            path,
-            f"has no rows of numbers; it begins with {clean(rows[0], 40)!r}",
-            "a CSV needs a header line and rows such as 0.000125,1.25,0.31",
+    fits: dict[object, _Fit] = {}
+    undecided = False
+    for separator, decimal in _READINGS:
+        fit = _fit(lines, separator, decimal)
+        if fit is not None:
+            key = (fit.start, fit.columns, fit.values)
+            undecided |= key in fits and fits[key].separator == fit.separator
+            fits.setdefault(key, fit)
+    if not fits:
+        raise _no_table(lines, name)
+    choices = list(fits.values())
+    notes: list[str] = []
+    if len(choices) > 1:
+        choices = [fit for fit in choices if _header(lines, fit)[0] is not None] or choices
+    if len(choices) > 1:
+        choices = _by_zeros(lines, choices, notes)
+    if len(choices) > 1:
+        raise _two_ways(choices, lines, name)
+    return _described(lines, choices[0], undecided, notes, name)
+
+
+def split(line: str, separator: str) -> list[str]:
+    """The fields of a line, blanks around them taken off, quotes honoured."""
+    if '"' in line:
+        if separator == " ":
+            line = " ".join(line.split())
+        fields = next(csv.reader([line], delimiter=separator, skipinitialspace=True), [])
+        return [field.strip() for field in fields]
+    if separator == " ":
+        return line.split()
+    return [field.strip() for field in line.split(separator)]
+
+
+def number(cell: str, decimal: str) -> float | None:
+    """A cell as a number; None when it is none, or not finite."""
+    if _NUMBER[decimal].match(cell) is None:
+        return None
+    value = float(cell.replace(",", "."))
+    return value if abs(value) != float("inf") else None
+
+
+# -- readings ------------------------------------------------------------------------------------
+
+
+def _fit(lines: list[str], separator: str, decimal: str) -> _Fit | None:
+    """The reading with this separator and decimal mark, when most lines from some place on fit."""
+    looked: list[tuple[int, list[str]]] = []
+    counts: dict[int, int] = {}
+    for k, line in enumerate(lines[: MOST_PREAMBLE + LINES_LOOKED_AT]):
+        if line.strip():
+            fields = split(line, separator)
+            if not _is_data(fields, decimal):
+                fields = []
+            looked.append((k, fields))
+            counts[len(fields)] = counts.get(len(fields), 0) + bool(fields)
+    width = max(counts, key=lambda n: counts[n], default=0)
+    if not width or width > MOST_COLUMNS:
+        return None
+    at = next(
+        (
+            p
+            for p in range(len(looked))
+            if all(len(fields) == width for _, fields in looked[p : p + 3])
+        ),
+        None,
+    )
+    if at is None:
+        return None
+    rest = looked[at : at + LINES_LOOKED_AT]
+    rows = [tuple(fields) for _, fields in rest if len(fields) == width]
+    if 10 * len(rows) < 6 * len(rest):
+        return None
+    trailing = width > 1 and separator != " " and all(row[-1] == "" for row in rows)
+    if trailing:
+        width -= 1
+        rows = [row[:-1] for row in rows]
+    values = tuple(tuple(_worth(cell, decimal) for cell in row) for row in rows[:60])
+    return _Fit(separator, decimal, width, looked[at][0], tuple(rows), trailing, values)
+
+
+def _worth(cell: str, decimal: str) -> float | str:
+    value = number(cell, decimal)
+    return cell if value is None else value
+
+
+def _is_data(fields: list[str], decimal: str) -> bool:
+    """Whether a line holds samples: numbers, or words for a missing one; time may be text."""
+    begin = 0
+    if fields and (_STAMP.match(fields[0]) or _CLOCK.match(fields[0])):
+        begin = 1
+    elif len(fields) > 1 and _DATE.match(fields[0]) and _CLOCK.match(fields[1]):
+        begin = 2
+    any_number = False
+    for cell in fields[begin:]:
+        if _NUMBER[decimal].match(cell):
+            any_number = True
+        elif not NO_NUMBER.match(cell):
+            return False
+    return any_number or (begin > 0 and len(fields) > begin)
+
+
+def _by_zeros(lines: list[str], choices: list[_Fit], notes: list[str]) -> list[_Fit]:
+    """Two columns of whole numbers, or one of decimals with a comma: look for `3,05`."""
+    parts = [fit for fit in choices if fit.separator == "," and fit.columns == 2]
+    wholes = [fit for fit in choices if fit.decimal == "," and fit.columns == 1]
+    if len(choices) != 2 or not parts or not wholes:
+        return choices
+    second = [row[1] for row in parts[0].rows if re.fullmatch(r"\d\d+", row[1])]
+    if any(cell.startswith("0") for cell in second):
+        notes.append("The comma was taken for a decimal mark: a number cannot begin with 0.")
+        return wholes
+    if len(second) >= ENOUGH_TO_SEE_A_ZERO:
+        notes.append(
+            "The comma was taken to part two columns of whole numbers: in"
+            f" {len(second)} lines no digits after it begin with 0, as decimals would."
         )
-    separator = best[1]
-    first = _first_row(lines, separator)
-    fields = _split(lines[first], separator)
-    decimal = _decimal(lines[first : first + 50], separator, path)
-    header = first - 1
-    while header >= 0 and not lines[header].strip():
-        header -= 1
-    titles = _split(lines[header], separator) if header >= 0 else []
-    titles = [title.strip().strip('"') for title in titles]
-    if titles and len(titles) != len(fields):
-        if separator == "," and len(fields) == 2 * len(titles):
-            raise refused(
-                path,
-                "reads two ways: the comma may part columns or be the decimal mark "
-                f"(line {first + 1}: {clean(lines[first], 40)!r}, {len(titles)} column titles)",
-                "save it with semicolons between columns, or with decimal points",
-            )
-        if separator == "," and len(titles) == 1 and len(fields) == 2:
-            raise refused(
-                path,
-                f"reads two ways: line {first + 1} is one number with a decimal comma, or two",
-                "save it with decimal points, or give every column a title",
-            )
-        titles = []
-    if not titles:
-        header = -1 if header < 0 else header
-        titles = [f"ch{n}" for n in range(1, len(fields) + 1)]
-        skipped_to = first
-    else:
-        skipped_to = header
-    names, units = zip(*(_title(title, n) for n, title in enumerate(titles, 1)), strict=True)
-    time_unit, iso = _time_column(titles[0], fields[0])
-    if len(fields) == 1 and (time_unit is not None or iso):
-        time_unit, iso = None, False
-    skipped = tuple(clean(line, 60) for line in lines[:skipped_to] if line.strip())
-    return Layout(
-        separator, decimal, names, units, time_unit, iso, first + 1, skipped[:MOST_PREAMBLE]
+        return parts
+    return choices
+
+
+# -- header --------------------------------------------------------------------------------------
+
+
+def _header(lines: list[str], fit: _Fit) -> tuple[list[str] | None, list[str] | None, int]:
+    """Titles, a row of units below them, and how many lines came before them all."""
+    before = [k for k in range(fit.start) if lines[k].strip()]
+    if not before:
+        return None, None, 0
+    cells = _titles(lines[before[-1]], fit)
+    if cells is None:
+        return None, None, fit.start
+    if all(_UNIT_CELL.match(cell) for cell in cells) and len(before) > 1:
+        above = _titles(lines[before[-2]], fit)
+        if above is not None:
+            return above, cells, before[-2]
+    return cells, None, before[-1]
+
+
+def _titles(line: str, fit: _Fit) -> list[str] | None:
+    line = line.lstrip("\ufeff").lstrip("#%").strip("\r\n ") if line.strip() else line
+    cells = split(line, fit.separator)
+    if fit.separator == " " and len(cells) != fit.columns:
+        cells = [cell.strip() for cell in re.findall(r"[^\s\[(]+(?:\s*[\[(][^\])]*[\])])?", line)]
+    if fit.trailing and len(cells) == fit.columns + 1 and cells[-1] == "":
+        cells.pop()
+    if len(cells) != fit.columns or not any(cells):
+        return None
+    if any(cell and number(cell, fit.decimal) is not None for cell in cells):
+        return None
+    return cells
+
+
+def _described(lines: list[str], fit: _Fit, undecided: bool, notes: list[str], name: str) -> Layout:
+    titles, units_row, skipped = _header(lines, fit)
+    if titles is None:
+        skipped = fit.start
+    preamble = [line for line in lines[:skipped] if line.strip()]
+    if preamble:
+        first = clean(preamble[0], 40)
+        notes.insert(
+            0,
+            f"1 line before the table was skipped: {first}."
+            if len(preamble) == 1
+            else f"{len(preamble)} lines before the table were skipped, from: {first}.",
+        )
+    pairs = [_name_and_unit(title) for title in titles or [""] * fit.columns]
+    if units_row is not None:
+        pairs = [
+            (one, unit or cell.strip("[]()"))
+            for (one, unit), cell in zip(pairs, units_row, strict=True)
+        ]
+    layout = Layout(
+        separator=fit.separator,
+        decimal=fit.decimal,
+        columns=fit.columns,
+        first_line=fit.start + 1,
+        names=(),
+        units=(),
+        trailing=fit.trailing,
+        undecided=undecided,
+    )
+    layout = _with_time(layout, fit, pairs, titles is not None, notes, name)
+    rest = [
+        pair
+        for column, pair in enumerate(pairs)
+        if column != layout.time_at and not (layout.dated and column == 0)
+    ]
+    if not rest:
+        raise refused(f"{name} has no column of samples beside its time", "export the samples too")
+    return replace(
+        layout,
+        names=tuple(unique([clean(one) for one, _ in rest])),
+        units=tuple(clean(unit, 12) for _, unit in rest),
+        notes=tuple(notes),
     )
 
 
-def value(text: str, decimal: str) -> float | None:
-    """A cell as a number; None for overload, blank, or anything that is none."""
-    text = text.strip().strip('"')
-    if text.lower() in _BAD_CELLS:
-        return None
-    if decimal == ",":
-        text = text.replace(",", ".")
-    try:
-        number = float(text)
-    except ValueError:
-        return None
-    return number if abs(number) < float("inf") else None
+def _name_and_unit(title: str) -> tuple[str, str]:
+    found = _TITLE.match(title)
+    if found:
+        return found[1].strip(), (found[2] if found[2] is not None else found[3]).strip()
+    slashed = _SLASHED.match(title)
+    return (slashed[1], slashed[2]) if slashed else (title, "")
 
 
-def _split(line: str, separator: str) -> list[str]:
-    return line.rstrip("\r\n").split(separator)
-
-
-def _numeric(line: str, separator: str) -> int:
-    """How many fields a row of numbers has; 0 when it is none."""
-    fields = [field.strip().strip('"') for field in _split(line, separator)]
-    if len(fields) > 1 and fields[-1] == "":
-        fields = fields[:-1]
-    good = [bool(_NUMBER.match(f)) for f in fields]
-    iso = bool(_ISO.match(fields[0]))
-    known = [ok or f.lower() in _BAD_CELLS for ok, f in zip(good, fields, strict=True)]
-    if iso:
-        known[0] = True
-    if not all(known) or not (any(good) or iso):
-        return 0
-    if separator != "," and any("," in f and "." in f for f in fields):
-        return len(fields)
-    return len(fields)
-
-
-def _longest_run(lines: list[str], separator: str) -> int:
-    """Rows of numbers in a row, weighed by their columns; a separator not seen counts least."""
-    best = run = 0
-    width = 0
-    for line in lines:
-        if not line.strip():
+def _with_time(
+    layout: Layout,
+    fit: _Fit,
+    pairs: list[tuple[str, str]],
+    titled: bool,
+    notes: list[str],
+    name: str,
+) -> Layout:
+    cells = fit.rows[0]
+    if _STAMP.match(cells[0]):
+        return replace(layout, time_at=0, time_kind=TimeKind.STAMP)
+    if _CLOCK.match(cells[0]):
+        return replace(layout, time_at=0, time_kind=TimeKind.CLOCK)
+    if len(cells) > 1 and _DATE.match(cells[0]) and _CLOCK.match(cells[1]):
+        return replace(layout, time_at=1, time_kind=TimeKind.CLOCK)
+    if not titled:
+        return _guessed_time(layout, fit, notes, name)
+    for column, (title, unit) in enumerate(pairs):
+        found = _TIME.match(title)
+        # Elsewhere than in front only a full word is taken for time: T may be a temperature.
+        if found is None or (column > 0 and len(found[1]) < 4):
             continue
-        n = _numeric(line, separator)
-        run = run + 1 if n and n == width else (1 if n else 0)
-        width = n
-        best = max(best, run * (1 + 2 * (n > 1)))
-    return best
+        wanted = (unit or found[2] or "").strip().lower()
+        if wanted not in _SECONDS:
+            raise refused(
+                f"{name}: the unit of its time column, {clean(wanted, 12)}, is not known",
+                "name the column time [s], time [ms] or time [us]",
+            )
+        unit_s = _SECONDS[wanted]
+        return replace(layout, time_at=column, time_kind=TimeKind.SECONDS, time_unit=unit_s)
+    if _ORDINAL.match(pairs[0][0]) and fit.columns > 1:
+        return replace(layout, time_at=0, time_kind=TimeKind.NUMBER)
+    return layout
 
 
-def _first_row(lines: list[str], separator: str) -> int:
-    """First line of the first steady run of numbers."""
-    candidates = [n for n, line in enumerate(lines) if line.strip()]
-    widths = {n: _numeric(lines[n], separator) for n in candidates}
-    for k, n in enumerate(candidates):
-        following = [widths[m] for m in candidates[k : k + 3]]
-        if widths[n] and all(w == widths[n] for w in following):
-            return n
-    return next(n for n in candidates if widths[n])
-
-
-def _decimal(rows: list[str], separator: str, path: Path) -> str:
-    if separator == ",":
-        return "."
-    fields = [f for row in rows for f in _split(row, separator)]
-    commas = [f for f in fields if "," in f]
-    points = [f for f in fields if "." in f and not _ISO.match(f.strip())]
-    if commas and points:
+def _guessed_time(layout: Layout, fit: _Fit, notes: list[str], name: str) -> Layout:
+    """Without a header: a first column that rises in even steps is time, or a sample number."""
+    first = [row[0] for row in fit.values]
+    values = [value for value in first if isinstance(value, float)]
+    if fit.columns < 2 or len(values) < 8 or len(values) < len(first):
+        return layout
+    steps = [b - a for a, b in pairwise(values)]
+    if min(steps) <= 0.0 or max(steps) > 1.5 * min(steps):
+        return layout
+    if all(step == 1.0 for step in steps):
+        notes.append("The first column was taken for sample numbers.")
+        return replace(layout, time_at=0, time_kind=TimeKind.NUMBER)
+    # Mains needs some hundred samples a second; slower ones are likely in another unit.
+    if min(steps) > 1.0 / 200.0:
         raise refused(
-            path,
-            f"uses both comma and point inside numbers ({clean(commas[0], 20)!r}, "
-            f"{clean(points[0], 20)!r}); one of them parts thousands",
-            "save it without thousands separators",
+            f"{name}: its first column looks like time, but in which unit is not said"
+            f" (steps of {min(steps):g})",
+            "add a header line, with the first column named time [s], time [ms] or time [us]",
         )
-    return "," if commas else "."
+    notes.append("The first column was taken for time in seconds; a header line would say.")
+    return replace(layout, time_at=0, time_kind=TimeKind.SECONDS)
 
 
-def _title(title: str, n: int) -> tuple[str, str]:
-    found = re.match(r"^(.*?)\s*(?:\[([^\]]*)\]|\(([^)]*)\))\s*$", title)
-    if found is None:
-        return clean(title) or f"ch{n}", ""
-    return clean(found[1]) or f"ch{n}", clean(found[2] or found[3] or "", 12)
+# -- refusals ------------------------------------------------------------------------------------
 
 
-def _time_column(title: str, cell: str) -> tuple[float | None, bool]:
-    if _ISO.match(cell.strip().strip('"')):
-        return None, True
-    found = _TIME_NAME.match(title.strip())
-    if found is None:
-        return None, False
-    unit = (found[1] or "s").lower()
-    return (1.0 if unit.startswith("s") else TIME_UNITS[unit]), False
+def _two_ways(choices: list[_Fit], lines: list[str], name: str) -> Exception:
+    where = choices[0].start
+    ways = " or ".join(
+        f"{fit.columns} column{'s' if fit.columns > 1 else ''}"
+        f" ({' | '.join(f'{v:g}' if isinstance(v, float) else clean(v, 12) for v in row[:4])})"
+        for fit in choices[:2]
+        for row in [fit.values[min(where, fit.start) - fit.start]]
+    )
+    return refused(
+        f"{name} can be read in two ways: line {where + 1}, {clean(lines[where], 30)}, is {ways}",
+        "add a header line with a name for every column, or write decimals with a point",
+    )
+
+
+def _no_table(lines: list[str], name: str) -> Exception:
+    text = [(k, line) for k, line in enumerate(lines) if line.strip()]
+    if not text:
+        return refused(f"{name} holds nothing but blank lines", "check that it is the right file")
+    thousands = re.compile(r"\d{1,3}(?:\.\d{3})+,\d|\d{1,3}(?:,\d{3})+\.\d")
+    for k, line in text[:LINES_LOOKED_AT]:
+        found = thousands.search(line)
+        if found:
+            return refused(
+                f"{name}: line {k + 1} has numbers with a mark for the thousands"
+                f" ({clean(found[0], 20)}…), which can be read in two ways",
+                "export them without thousands separators",
+            )
+    k, line = text[min(1, len(text) - 1)]
+    return refused(
+        f"{name} holds no table of numbers that can be made out;"
+        f" line {k + 1} reads: {clean(line, 40)}",
+        "a table has a header line such as time [s],U [V],I [A] and a line for each sample",
+        "if it is what a logger sent, try --format text",
+    )

@@ -1,297 +1,358 @@
-"""CSV: a header, a time column or a given rate, a column per channel. Read in pieces.
+"""Tables of samples: CSV, TSV, text with a time column or with a rate told by the person.
 
-The fast road hands whole pieces to numpy after checking that every line has its separators; a
-piece with an offending line is halved until only that line is read by hand. A cell that is no
-number (OL, blank, nan) takes its whole set out: a gap, counted.
+A piece of whole lines goes through the fast road (`csv_numbers`); lines that it leaves are read
+one by one here. A set with a cell that is no number is dropped and becomes a gap, and so is what
+the time column shows to be missing; nothing is bridged.
 """
 
-import datetime
+import math
 from collections.abc import Iterator
+from dataclasses import replace
+from datetime import datetime
 from pathlib import Path
 
 import numpy as np
 import numpy.typing as npt
 
 from acquisition.block import Block
-from acquisition.recordings.csv_layout import find_layout, value
-from acquisition.recordings.faults import absent, damaged, refused
+from acquisition.errors import RecordingDamaged
+from acquisition.recordings.csv_layout import TimeKind, find_layout, number, split
+from acquisition.recordings.csv_lines import TextFile
+from acquisition.recordings.csv_numbers import parse
+from acquisition.recordings.csv_times import (
+    Timing,
+    clocks,
+    find_timing,
+    missing,
+    other_step,
+    refined,
+    stamps,
+)
+from acquisition.recordings.placing import Placer
+from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
 from acquisition.recordings.recording import RecordingOptions
 from acquisition.stream import ChannelHint, StreamInfo, clean
 
 Floats = npt.NDArray[np.float64]
+Mask = npt.NDArray[np.bool_]
 
-PIECE = 4 << 20  # bytes
-HEAD = 256 << 10  # bytes looked at to find the layout
-LONGEST_LINE = 1 << 20
-BY_HAND = 2048  # bytes: smaller pieces are read line by line
-GAP_STEPS = 1.5  # a step in time of so many usual ones is a gap
+MANY_RAGGED = 200  # lines without the right count of fields, more than half of a piece: no table
 
 
 class CsvRecording:
-    """A table of samples."""
+    """A table as Blocks of float64 in the units of its header."""
 
     def __init__(self, path: Path, options: RecordingOptions) -> None:
-        """Open it and find its layout and rate.
+        """Find the layout and the rate.
 
         Raises:
-            RecordingAbsent, RecordingRefused: see `open_recording`.
+            RecordingAbsent, RecordingRefused: not to be read, no table, two readings fit, or the
+                rate must be told.
         """
         self.path = path
         self.sets: int | None = None
-        self._done = 0
+        self.bytes_total = size_of(path)
+        self._name = shown(path)
         try:
-            self.bytes_total = path.stat().st_size
-            with path.open("rb") as file:
-                head = file.read(HEAD)
+            self._file = TextFile(path)
+            self._refuse_binary()
+            lines = self._file.head_lines()
         except OSError as error:
-            raise absent(path, error) from None
-        if b"\0" in head[:4096]:
-            raise refused(
-                path,
-                "is binary, not a table",
-                "name it by its kind (.wav, .npz), or give --format for captured bytes",
-            )
-        self._encoding = "utf-8"
-        try:
-            text = head.decode("utf-8-sig", errors="strict" if len(head) < HEAD else "ignore")
-        except UnicodeDecodeError:
-            self._encoding = "latin-1"
-            text = head.decode("latin-1")
-        lines = text.splitlines()
-        if len(head) == HEAD and len(lines) > 1:
-            lines.pop()  # cut by the reading, not by the file
-        self._layout = find_layout(lines[:2000], path)
-        self._newline = b"\n" if b"\n" in head else b"\r"
-        rate, notes = self._rate(options.rate)
-        layout = self._layout
-        first = 1 if layout.has_time else 0
-        if layout.skipped:
-            notes = (f"{len(layout.skipped)} lines before the header were skipped", *notes)
-        self._step = 1.0 / rate
+            raise unreadable(path, error) from None
+        self._layout = find_layout(lines, self._name)
+        self._origin: datetime | None = None
+        self._timing: Timing | None = None
+        notes = list(self._layout.notes)
+        if self._layout.undecided:
+            self._decide()
+        rate = self._rate(options, notes)
+        if rate < 200.0:
+            notes.append(f"{rate:.6g} sets a second is too slow to show a mains wave; is it right?")
         self.info = StreamInfo(
             format="csv",
             channels=tuple(
-                ChannelHint(name=name, unit=unit, gain=1.0 if unit else None)
-                for name, unit in zip(layout.names[first:], layout.units[first:], strict=True)
+                ChannelHint(name=one, unit=unit, gain=1.0)
+                for one, unit in zip(self._layout.names, self._layout.units, strict=True)
             ),
             rate=rate,
             sample_type="float64",
-            notes=notes,
+            started=self._started(lines),
+            notes=tuple(notes),
         )
 
     def blocks(self) -> Iterator[Block]:
-        """See Recording."""
-        layout = self._layout
-        index, line, lost = 0, layout.first_line, 0
-        last_time: float | None = None
-        unknown = False  # time ran backwards: what is missing cannot be counted
-        for rows, good, offset in self._pieces():
-            self._done = offset
-            count = len(good)
-            values = rows if not layout.has_time else rows[:, 1:]
-            bounds = np.flatnonzero(
-                np.diff(np.concatenate(([False], good, [False])).astype(np.int8))
-            )
-            done = 0
-            for a, b in bounds.reshape(-1, 2).tolist():
-                lost += a - done
-                done = b
-                cuts = [a]
-                holes = [0]
-                if layout.has_time and self._even:
-                    times = rows[a:b, 0]
-                    steps = np.diff(times, prepend=times[0] - self._step)
-                    if last_time is not None:
-                        steps[0] = times[0] - last_time - lost * self._step
-                    last_time = float(times[-1])
-                    odd = np.flatnonzero((steps > GAP_STEPS * self._step) | (steps < -self._step))
-                    holes = [0]
-                    for at in odd.tolist():
-                        hole = round(float(steps[at]) / self._step) - 1
-                        if at == 0:
-                            holes[0] = hole
-                        else:
-                            cuts.append(a + at)
-                            holes.append(hole)
-                for cut, stop, hole in zip(cuts, [*cuts[1:], b], holes, strict=True):
-                    unknown = hole < 0
-                    missing = lost + max(0, hole)
-                    yield Block(
-                        codes=np.ascontiguousarray(values[cut:stop].T),
-                        index=index + missing,
-                        lost_before=None if unknown else missing,
-                        gap_before=missing > 0 or unknown,
+        """Blocks in order. Raises RecordingDamaged where it stops being such a table."""
+        placer = Placer()
+        before: float | None = None
+        for line, table, times, good in self._tables():
+            at = np.flatnonzero(good)
+            if len(at) == 0:
+                placer.miss(len(good))
+                continue
+            # Lines dropped before each good one; the time column may know of more.
+            lost = np.diff(at, prepend=-1) - 1
+            if times is not None and self._timing is not None:
+                times = times[at]
+                told = missing(self._timing, times, before)
+                before = float(times[-1])
+                lost = np.where(told < 0, -1, np.maximum(lost, told))
+                if (other := other_step(self._timing, times)) is not None:
+                    raise damaged(
+                        f"{self._name}: beyond line {line + other[0]} times step by"
+                        f" {other[1]:g}, not by {self._timing.step:g} as before",
+                        "cut the file there and measure the parts one by one",
                     )
-                    index += missing + stop - cut
-                    lost = 0
-            lost += count - done
-            line += count
-        self._done = self.bytes_total
-        if index == 0:
-            raise refused(self.path, "has no row in which every cell is a number")
-        if lost:
-            raise damaged(self.path, f"line {line - lost} and what follows do not read as numbers")
+            cuts = np.flatnonzero(lost)
+            whole = len(at) == len(good)
+            for a, b in zip([0, *cuts.tolist()], [*cuts.tolist(), len(at)], strict=True):
+                if b > a:
+                    if lost[a]:
+                        placer.miss(int(lost[a]) if lost[a] > 0 else None)
+                    yield placer.place(table[:, a:b] if whole else table[:, at[a:b]])
+            if at[-1] + 1 < len(good):
+                placer.miss(len(good) - 1 - int(at[-1]))
+        if self._ragged_end:
+            raise damaged(
+                f"{self._name} is cut short in line {self._ragged_end}",
+                "what is before it was read",
+            )
 
     def bytes_read(self) -> int:
-        """See Recording."""
-        return self._done
+        """How far reading has come."""
+        return self._file.bytes_read
 
     def close(self) -> None:
-        """See Recording."""
+        """Nothing stays open between two pieces."""
 
-    # -- rate -------------------------------------------------------------------------------
+    # -- the rate ---------------------------------------------------------------------------
 
-    def _rate(self, given: float | None) -> tuple[float, tuple[str, ...]]:
-        """The rate from the first piece's time column, or as given."""
-        self._even = False
-        if not self._layout.has_time:
-            if given is None:
-                raise refused(
-                    self.path,
-                    "has no time column, so its sample rate is not known",
-                    "give it with --rate HZ",
-                )
-            return given, ()
-        piece = next(self._pieces(), None)
-        times = piece[0][piece[1], 0] if piece is not None else np.empty(0)
-        if given is not None:
-            return given, ()
-        if len(times) < 2 or not times[-1] > times[0]:
+    def _rate(self, options: RecordingOptions, notes: list[str]) -> float:
+        layout = self._layout
+        own: float | None = None
+        if layout.time_kind is TimeKind.NUMBER:
+            self._timing = Timing(1.0)
+        elif layout.time_at is not None:
+            _, _, times, good = next(self._tables(), (0, None, None, np.empty(0, np.bool_)))
+            known = times[good] if times is not None else np.empty(0)
+            timing = find_timing(known) if len(known) > 1 else None
+            if timing is not None and not timing.exact:
+                timing = self._refined(timing, float(known[0]))
+            if timing is not None:
+                self._timing = timing
+                own = timing.rate
+                if timing.note:
+                    notes.append(timing.note)
+        if options.rate is not None:
+            if own is not None and abs(own / options.rate - 1.0) > 1e-3:
+                notes.append(f"--rate {options.rate:.10g} is used; the times say {own:.6g} Hz.")
+            return options.rate
+        if own is not None:
+            return own
+        what = (
+            "has no time column"
+            if layout.time_at is None or layout.time_kind is TimeKind.NUMBER
+            else "has times from which no rate can be told"
+        )
+        raise refused(f"{self._name} {what}", "tell the rate, for example: --rate 8000")
+
+    def _refined(self, timing: Timing, first: float) -> Timing:
+        """The rate from the whole file, where the first lines tell it only roughly."""
+        fields = split(self._file.last_line(), self._layout.separator)
+        at = self._layout.time_at
+        if at is None or at >= len(fields) or self._layout.time_kind is TimeKind.CLOCK:
+            return timing
+        if self._layout.time_kind is TimeKind.STAMP:
+            last = float(stamps([fields[at]], self._origin)[0][0])
+        else:
+            value = number(fields[at], self._layout.decimal)
+            last = math.nan if value is None else value * self._layout.time_unit
+        lines = self._file.count_lines() - self._layout.first_line + 1
+        return refined(timing, lines, first, last)
+
+    def _started(self, lines: list[str]) -> str | None:
+        if self._layout.time_kind is not TimeKind.STAMP:
+            return None
+        cell = split(lines[self._layout.first_line - 1], self._layout.separator)[0]
+        return clean(cell.replace(",", ".").replace(" ", "T", 1))
+
+    def _refuse_binary(self) -> None:
+        head = self._file.head
+        if self._file.wide:
+            return
+        odd = sum(byte < 32 and byte not in b"\t\n\r\f\x1a" for byte in head[:4096])
+        if b"\0" in head or odd > len(head[:4096]) // 20:
             raise refused(
-                self.path,
-                "has a time column from which no sample rate can be told",
-                "give the rate with --rate HZ",
+                f"{self._name} is named as text but holds binary data"
+                f" (first bytes {head[:8].hex(' ')})",
+                "if it is what a logger sent, try --format crestwire or --format raw",
             )
-        steps = np.diff(times)
-        usual = float(np.median(steps))
-        if usual <= 0.0:  # times coarser than the samples repeat
-            rate = (len(times) - 1) / float(times[-1] - times[0])
-            return rate, (f"times repeat; the rate {rate:.6g} Hz is taken from their span",)
-        # The longest stretch without a gap tells the rate best.
-        cuts = np.flatnonzero((steps > GAP_STEPS * usual) | (steps <= 0.0))
-        edges = np.concatenate(([-1], cuts, [len(steps)]))
-        k = int(np.argmax(np.diff(edges)))
-        a, b = int(edges[k]) + 1, int(edges[k + 1])
-        span = float(times[b] - times[a])
-        if b <= a or span <= 0.0:
-            raise refused(self.path, "has times that jump at every row", "give --rate HZ")
-        rate = (b - a) / span
-        grid = times[a] + np.arange(b - a + 1) / rate
-        off = float(np.max(np.abs(times[a : b + 1] - grid))) * rate
-        # Times are printed rounded: a whole number within that rounding is the rate meant.
-        if abs(rate - round(rate)) <= max(off, 1e-9) / (b - a) * rate * 2.0 and round(rate) > 0:
-            rate = float(round(rate))
-        notes: tuple[str, ...] = ()
-        self._even = off < 0.5
-        if not self._even:
-            notes = (
-                f"times are uneven by up to {off:.1f} steps; an even rate of {rate:.6g} Hz is used",
-            )
-        return rate, notes
 
-    # -- lines ------------------------------------------------------------------------------
+    def _decide(self) -> None:
+        """No number in the first lines had a decimal mark: look for a comma further on."""
+        layout = self._layout
+        if layout.separator == "," or self._file.wide:
+            return
+        for number_, piece in enumerate(self._file.pieces()):
+            text = piece if number_ else b"\n".join(piece.split(b"\n")[layout.first_line - 1 :])
+            comma, point = text.find(b","), text.find(b".")
+            if comma >= 0 and (point < 0 or comma < point):
+                self._layout = replace(layout, decimal=",")
+            if comma >= 0 or point >= 0:
+                return
 
-    def _pieces(self) -> Iterator[tuple[Floats, npt.NDArray[np.bool_], int]]:
-        """(rows (n, columns), which of them are good (n,), bytes read)."""
-        with self.path.open("rb") as file:
-            for _ in range(self._layout.first_line - 1):
-                file.readline(LONGEST_LINE)
-            rest = b""
-            while data := file.read(PIECE):
-                data = rest + data
-                if self._newline == b"\r":
-                    data = data.replace(b"\r", b"\n")
-                cut = data.rfind(b"\n") + 1
-                if cut == 0:
-                    if len(data) > LONGEST_LINE:
-                        raise damaged(self.path, "has a line of over a megabyte")
-                    rest = data
+    # -- lines to numbers -------------------------------------------------------------------
+
+    def _tables(self) -> Iterator[tuple[int, Floats, Floats | None, Mask]]:
+        """(number of the first line, samples (channels, n), times (n,) or None, usable (n,))."""
+        layout = self._layout
+        line, skip = 1, layout.first_line - 1
+        self._ragged_end = 0
+        before: float | None = None
+        for piece in self._file.pieces():
+            first = line
+            line += piece.count(b"\n")
+            if skip:
+                lines = piece.split(b"\n", skip)
+                passed = len(lines) - 1
+                skip -= passed
+                first += passed
+                piece = lines[-1]
+                if skip or not piece:
                     continue
-                rest = data[cut:]
-                rows, good = self._rows(data[:cut])
-                if len(good):
-                    yield rows, good, file.tell()
-            if rest.strip():
-                rows, good = self._rows(rest + b"\n")
-                if len(good):
-                    yield rows, good, file.tell()
-
-    def _rows(self, data: bytes) -> tuple[Floats, npt.NDArray[np.bool_]]:
-        if not self._layout.iso_time:
-            quick = self._quick(data)
-            if quick is not None:
-                return quick, np.isfinite(quick).all(axis=1)
-        if len(data) > BY_HAND and not self._layout.iso_time:
-            half = data.find(b"\n", len(data) // 2) + 1
-            if 0 < half < len(data):
-                first, first_good = self._rows(data[:half])
-                second, second_good = self._rows(data[half:])
-                return np.concatenate((first, second)), np.concatenate((first_good, second_good))
-        return self._by_hand(data)
-
-    def _quick(self, data: bytes) -> Floats | None:
-        """Every line by numpy at once; None when one of them is not as it should be."""
-        layout = self._layout
-        if b'"' in data or b"\n\n" in data or b"\n\r\n" in data or b" " in data:
-            return None
-        if b"\r" in data:
-            data = data.replace(b"\r", b"")
-        if layout.decimal == ",":
-            data = data.replace(b",", b".")
-        if layout.separator != ",":
-            data = data.replace(layout.separator.encode(), b",")
-        if not data.endswith(b"\n"):
-            return None
-        raw = np.frombuffer(data, np.uint8)
-        ends = np.flatnonzero(raw == 10)
-        commas = np.flatnonzero(raw == 44)
-        n = len(ends)
-        # Commas before each line end: any line with one too many or few breaks the ladder.
-        seen = np.searchsorted(commas, ends)
-        if not np.array_equal(seen, (layout.columns - 1) * np.arange(1, n + 1)):
-            return None
-        try:
-            values = np.fromstring(data.replace(b"\n", b",")[:-1].decode("ascii"), sep=",")
-        except (ValueError, UnicodeDecodeError):
-            return None
-        if len(values) != n * layout.columns:
-            return None
-        rows = values.reshape(n, layout.columns)
-        if layout.time_unit not in (None, 1.0):
-            rows[:, 0] *= layout.time_unit
-        return rows
-
-    def _by_hand(self, data: bytes) -> tuple[Floats, npt.NDArray[np.bool_]]:
-        layout = self._layout
-        lines = [
-            line for line in data.decode(self._encoding, "replace").split("\n") if line.strip()
-        ]
-        rows = np.full((len(lines), layout.columns), np.nan)
-        for n, line in enumerate(lines):
-            fields = line.rstrip("\r").split(layout.separator)
-            if len(fields) == layout.columns + 1 and not fields[-1].strip():
-                fields.pop()
-            if len(fields) != layout.columns:
+            unfinished = not piece.endswith(b"\n")
+            if unfinished:
+                piece += b"\n"
+            table, texts, good, ragged = self._numbers(piece, first)
+            if unfinished and len(good) and ragged[-1]:
+                self._ragged_end = line
+                table, texts, good = table[:, :-1], texts[:-1], good[:-1]
+            if not len(good):
                 continue
-            for c, field in enumerate(fields):
-                number = (
-                    _seconds_of_day_and_date(field)
-                    if c == 0 and layout.iso_time
-                    else value(field, layout.decimal)
+            times: Floats | None = None
+            if layout.time_kind in (TimeKind.STAMP, TimeKind.CLOCK):
+                times, before = self._text_times(texts, before)
+                good &= np.isfinite(times)
+            elif layout.time_at is not None:
+                times = table[layout.time_at] * layout.time_unit
+                table = (
+                    table[1:] if layout.time_at == 0 else np.delete(table, layout.time_at, axis=0)
                 )
-                if number is not None:
-                    rows[n, c] = number
-        if layout.time_unit not in (None, 1.0):
-            rows[:, 0] *= layout.time_unit
-        return rows, np.asarray(np.isfinite(rows).all(axis=1))
+            yield first, table, times, good
+
+    def _text_times(self, texts: list[str], before: float | None) -> tuple[Floats, float | None]:
+        if self._layout.time_kind is TimeKind.STAMP:
+            times, self._origin = stamps(texts, self._origin)
+            return times, None
+        times = clocks(texts, before)
+        known = times[np.isfinite(times)]
+        return times, float(known[-1]) if len(known) else before
+
+    def _numbers(self, piece: bytes, first: int) -> tuple[Floats, list[str], Mask, Mask]:
+        """Table (columns, n), time texts, lines that are usable, lines with a wrong field count."""
+        layout = self._layout
+        columns = layout.columns
+        texts: list[str] = []
+        if layout.separator == " ":
+            piece = b"\n".join(b" ".join(one.split()) for one in piece.split(b"\n"))
+        elif layout.trailing:
+            piece = piece.replace(layout.separator.encode() + b"\n", b"\n")
+        if layout.time_kind in (TimeKind.STAMP, TimeKind.CLOCK):
+            assert layout.time_at is not None
+            piece, texts = _without_text(piece, layout.separator, layout.time_at)
+            columns -= 1 + layout.time_at
+        blank = layout.separator.encode() + b" "
+        if layout.separator != " " and blank in piece:
+            piece = piece.replace(blank, blank[:1])
+        found = parse(piece, ord(layout.separator), ord(layout.decimal), columns)
+        good = ~found.odd
+        ragged = np.zeros(len(good), np.bool_)
+        if found.odd.any():
+            at = np.flatnonzero(found.odd)
+            lines = [piece[found.starts[k] : found.ends[k]] for k in at.tolist()]
+            keep = np.ones(len(good), np.bool_)
+            rows, usable, wrong, nothing = self._slowly(lines, columns)
+            found.table[:, at] = rows
+            good[at], ragged[at] = usable, wrong
+            keep[at[nothing]] = False
+            if np.count_nonzero(wrong) > max(MANY_RAGGED, len(good) // 2):
+                raise self._no_table_any_more(lines, wrong, first + int(at[wrong][0]), columns)
+            if not keep.all():
+                texts = [text for text, kept in zip(texts, keep, strict=False) if kept]
+                return found.table[:, keep], texts, good[keep], ragged[keep]
+        return found.table, texts, good, ragged
+
+    def _slowly(self, lines: list[bytes], columns: int) -> tuple[Floats, Mask, Mask, Mask]:
+        """Lines one by one: rows (columns, n), usable, wrong field count, nothing in it at all."""
+        rows = np.full((columns, len(lines)), np.nan)
+        wrong = np.zeros(len(lines), np.bool_)
+        nothing = np.zeros(len(lines), np.bool_)
+        pending: list[int] = []
+        separator = self._layout.separator.encode()
+        for k, line in enumerate(lines):
+            if line.count(separator) == columns - 1 and b'"' not in line and line.strip():
+                pending.append(k)
+                continue
+            text = line.decode("latin-1").strip()
+            if not text or text[0] in "#%":
+                nothing[k] = True
+                continue
+            cells = split(text, self._layout.separator)
+            if self._layout.trailing and len(cells) == columns + 1:
+                cells.pop()
+            wrong[k] = len(cells) != columns
+            if not wrong[k]:
+                rows[:, k] = [self._cell(cell) for cell in cells]
+        self._in_bulk(lines, pending, rows)
+        return rows, np.asarray(np.isfinite(rows).all(axis=0)), wrong, nothing
+
+    def _in_bulk(self, lines: list[bytes], at: list[int], rows: Floats) -> None:
+        """Lines with the right separators, by numpy: halved until only the bad ones are left."""
+        if not at:
+            return
+        columns = len(rows)
+        if len(at) == 1:
+            cells = split(lines[at[0]].decode("latin-1"), self._layout.separator)
+            rows[:, at[0]] = [self._cell(cell) for cell in cells]
+            return
+        text = b"\n".join(lines[k] for k in at)
+        if self._layout.decimal == ",":
+            text = text.replace(b".", b"x").replace(b",", b".")
+        text = text.replace(self._layout.separator.encode(), b",").replace(b"\n", b",")
+        try:
+            flat = np.fromstring(text.decode("latin-1"), sep=",")
+        except ValueError:
+            flat = np.empty(0)
+        if len(flat) == columns * len(at):
+            rows[:, at] = flat.reshape(-1, columns).T
+            return
+        middle = len(at) // 2
+        self._in_bulk(lines, at[:middle], rows)
+        self._in_bulk(lines, at[middle:], rows)
+
+    def _cell(self, cell: str) -> float:
+        value = number(cell, self._layout.decimal)
+        return math.nan if value is None else value
+
+    def _no_table_any_more(
+        self, lines: list[bytes], wrong: Mask, number_: int, columns: int
+    ) -> RecordingDamaged:
+        line = lines[int(np.flatnonzero(wrong)[0])].decode("latin-1")
+        return damaged(
+            f"{self._name}: from line {number_} on it is no table of {columns} columns any more:"
+            f" {clean(line)}",
+            "what is before it was read; cut the file there",
+        )
 
 
-def _seconds_of_day_and_date(text: str) -> float | None:
-    try:
-        moment = datetime.datetime.fromisoformat(clean(text.strip().strip('"'), 40))
-    except ValueError:
-        return None
-    if moment.tzinfo is None:
-        moment = moment.replace(tzinfo=datetime.UTC)
-    # Whole days apart keep a float's digits for the fraction.
-    return (moment - datetime.datetime(2000, 1, 1, tzinfo=datetime.UTC)).total_seconds()
+def _without_text(piece: bytes, separator: str, time_at: int) -> tuple[bytes, list[str]]:
+    """Lines without the fields up to the time's, and the time's texts."""
+    texts: list[str] = []
+    rests: list[bytes] = []
+    mark = separator.encode()
+    for line in piece[:-1].split(b"\n"):
+        rest = line
+        for _ in range(time_at + 1):
+            field, _, rest = rest.partition(mark)
+        texts.append(field.strip(b' "').decode("latin-1"))
+        rests.append(rest)
+    return b"\n".join(rests) + b"\n", texts
