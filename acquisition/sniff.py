@@ -29,6 +29,8 @@ SIGNED_GAIN = 0.98  # signed only if more than 2 % smoother
 REFUSE = 0.75  # steps this large against shuffled words are no signal
 FEW_SAMPLES = 0.25  # a sine of 20 samples a cycle: 1.571 sin(pi / 20), closed form
 UNEVEN = 0.6  # steps at one phase this small against another: channels that are equal
+ORDER_MARGIN = 1.015  # the other byte order must be rougher by this much; wrong picks had < 1.0099
+CLEAR_ENTROPY = 0.1  # bits between high and low bytes, to be sure which is which
 IDLE_SPREAD = 8.0  # codes, standard deviation
 
 
@@ -164,7 +166,7 @@ def _raw(data: bytes) -> Identification:
     entropy = (_entropy(octets[0::2]), _entropy(octets[1::2]))
     high = 0 if entropy[0] < entropy[1] else 1  # where the calmer bytes lie
     best = _best_raw(octets, high)
-    score, shuffled, order, kind, channels, words = best
+    score, shuffled, order, kind, channels, words, margin = best
     calm = min(entropy)
     spread = float(
         np.std(words[: len(words) // channels * channels].reshape(-1, channels), axis=0).max()
@@ -196,6 +198,10 @@ def _raw(data: bytes) -> Identification:
             "there may be fewer than 20 samples in a mains cycle; then the number of channels"
             " cannot be told"
         )
+    if margin < ORDER_MARGIN or abs(entropy[0] - entropy[1]) < CLEAR_ENTROPY:
+        ambiguous.append(
+            "the other byte order fits about as well; with all 16 bits in use it cannot be told"
+        )
     doubled = _equal_channels(words, channels)
     if doubled:
         ambiguous.append(f"it may be {doubled} channels, some with the same signal")
@@ -222,8 +228,11 @@ def _offset(skip: int, high: int, order: str) -> int:
 
 def _best_raw(
     octets: npt.NDArray[np.uint8], high: int
-) -> tuple[float, float, str, str, int, npt.NDArray[np.int64]]:
-    """The likeliest reading: score, shuffled score, byte order, type, channels, words."""
+) -> tuple[float, float, str, str, int, npt.NDArray[np.int64], float]:
+    """The likeliest reading: score, shuffled score, byte order, type, channels, words.
+
+    And how much rougher it is in the other byte order.
+    """
     readings = []
     for order in ("little", "big"):
         begin = high if order == "big" else 1 - high
@@ -242,7 +251,9 @@ def _best_raw(
     least = min(scores)
     channels = next(c for c, s in enumerate(scores, 1) if s <= FEWEST * least)
     mixed = np.random.default_rng(0).permutation(words)
-    return scores[channels - 1], _roughness(mixed, 1), order, kind, channels, words
+    other = max(min(reading[3]) for reading in kept)
+    margin = other / least if least else 1.0
+    return scores[channels - 1], _roughness(mixed, 1), order, kind, channels, words, margin
 
 
 def _roughness(words: npt.NDArray[np.int64], channels: int) -> float:

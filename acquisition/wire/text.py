@@ -7,6 +7,7 @@ the lines off the locked shape; what numpy refuses goes line by line.
 
 import re
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 import numpy.typing as npt
@@ -18,9 +19,10 @@ from acquisition.wire.text_shape import TextShape, learn, may_be_time, split, te
 
 LINE_LIMIT = 2048  # bytes; 33 fields of 20 are 693, a longer line is none
 LEARN_LINES = 16  # lines to lock a shape on, doubled when they do not agree
-LEARN_LIMIT = 512
+LEARN_LIMIT = 1024
 # An int64 holds 18 digits and numpy turns more into -1 without a word; 15 stay exact as floats.
 DIGITS = 15
+MAYBE_TIME = "the first column rises steadily and may be a time, not a channel"
 LOST_SHAPE = 100  # lines off the shape in a row, before it is said aloud
 NUMBER_BEGINS = tuple(bytes([c]) for c in b"+-.0123456789")
 COMMA, NEWLINE, POINT, NINE, SLASH = ord(","), ord("\n"), ord("."), ord("9"), ord("/")
@@ -91,7 +93,7 @@ class TextDecoder:
         """The stream has ended: learn from what there is. An unended last line may be cut."""
         self._tally["bytes"] += len(self._tail)
         self._tail = b""
-        if self.shape is None and self._learning and self._lock():
+        if self.shape is None and self._learning and self._lock(at_end=True):
             return self._relearned([], float("nan"))
         return []
 
@@ -125,18 +127,21 @@ class TextDecoder:
                 return self._relearned(lines[k + 1 :], arrived)
         return []
 
-    def _lock(self) -> bool:
+    def _lock(self, at_end: bool = False) -> bool:
         """Try to learn the shape from the lines in hand."""
         shape = learn(self._learning)
-        if shape is not None and (
-            len(self._learning) >= LEARN_LIMIT or not may_be_time(self._learning, shape)
-        ):
+        if shape is not None and at_end and may_be_time(self._learning, shape):
+            shape = replace(shape, notes=(*shape.notes, MAYBE_TIME))
+        elif shape is not None and len(self._learning) < LEARN_LIMIT:
+            # A column that rises is watched until it falls or has shown to be a time.
+            shape = None if may_be_time(self._learning, shape) else shape
+        if shape is not None:
             self.shape = shape
             self._describe(shape)
             return True
         self._next_try = len(self._learning) * 2
         if self._next_try > LEARN_LIMIT:
-            if shape is None:
+            if learn(self._learning) is None:
                 first = clean(self._learning[-1].decode("utf-8", "replace"), 60)
                 self.problem = f"lines of text came, but not of numbers; one reads: {first}"
                 half = len(self._learning) // 2

@@ -22,7 +22,9 @@ WITHIN = re.compile(rb"(?<![\w.])" + NUMBER + rb"(?!\.?\d)")
 SEPARATORS = (b";", b"\t", b"|", b",", b" ", b":", b"/")
 SHARE = 0.9  # of the lines must have one shape
 FIELD_LIMIT = 33  # 32 channels and a time
-TIME_LINES = 64  # lines a column must rise steadily for, to be a time without being called one
+# Lines a column must rise steadily for, to be a time without being called one. Half a cycle of
+# 50 Hz has fewer at any rate that text can carry.
+TIME_LINES = 512
 TIME_NAMES = re.compile(
     r"(?:t|time|zeit|temps|tiempo|tempo|timestamp|millis|micros|ms|us|µs|sec|seconds?)"
     r"(?:[ _]*[\[(]?(s|sec|ms|us|µs|millis|micros)[\])]?)?",
