@@ -162,8 +162,9 @@ class Reader:
                     self._pause = BACKOFF_S[0]  # it is back, not merely open
                     self._time(blocks, arrived)
                     self._keep(blocks)
-            if arrived - self._published >= PUBLISH_S:
-                self._publish(self._state(arrived))
+            state = self._state(arrived)
+            if state is not self.status.state or arrived - self._published >= PUBLISH_S:
+                self._publish(state)
             if data and len(data) < TRICKLE:
                 self._wait(TRICKLE_S)
 

@@ -68,6 +68,8 @@ class TcpLink:
         return error
 
     def _connect(self, host: str, port: int, connect_s: float) -> socket.socket:
+        if not 0 < port < 65536:  # the system would take it modulo 65536
+            raise LinkUnusable(f"{port} is no TCP port; choose one from 1 to 65535")
         try:
             made = socket.create_connection((host, port), timeout=connect_s)
         except (socket.gaierror, UnicodeError) as error:
