@@ -5,6 +5,7 @@ import importlib
 import os
 import sys
 from collections.abc import Sequence
+from typing import NoReturn
 
 from crestwatch import diagnostics
 
@@ -62,7 +63,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 
 def build_parser(only: str | None = None) -> argparse.ArgumentParser:
     """The parser; the arguments of command `only`, of every command when it is "*"."""
-    parser = argparse.ArgumentParser(
+    parser = _Parser(
         prog="crestwatch",
         description=DESCRIPTION,
         epilog=EXAMPLES,
@@ -84,6 +85,15 @@ def build_parser(only: str | None = None) -> argparse.ArgumentParser:
         )
         module.add_arguments(command)
     return parser
+
+
+class _Parser(argparse.ArgumentParser):
+    """Says what is wrong the way every other message does."""
+
+    def error(self, message: str) -> NoReturn:
+        """One sentence, what to try, exit code 2."""
+        diagnostics.say(message, (f"`{self.prog} --help` shows what there is",))
+        self.exit(diagnostics.WRONG_USAGE)
 
 
 class _Version(argparse.Action):

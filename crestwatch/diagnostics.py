@@ -53,9 +53,8 @@ def _code_of(error: BaseException) -> int | None:
     # The rooms are imported here, not above, so that `--help` stays light.
     from acquisition import errors as acquisition_errors
     from rig import errors as rig_errors
-    from sim import errors as sim_errors
 
-    if isinstance(error, UsageError | rig_errors.RigError | sim_errors.SimError):
+    if isinstance(error, UsageError | rig_errors.RigError):
         return WRONG_USAGE
     if isinstance(error, CannotWrite):
         return CANNOT_WRITE

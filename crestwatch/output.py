@@ -8,12 +8,14 @@ import csv
 import json
 import sys
 from collections.abc import Sequence
+from dataclasses import dataclass
 from typing import Protocol, TextIO
 
 from acquisition.status import ReaderStatus
 from acquisition.stream import StreamInfo
+from dsp.waveform import Channel
 from shift import record, wording
-from shift.engine import Batch, Engine
+from shift.batch import Batch
 from shift.event import Event
 from shift.summary import Spread, Summary
 
@@ -28,10 +30,21 @@ CSV_COLUMNS = (
 TABLE_EVENTS = 20  # events listed under the table; the records hold them all
 
 
+@dataclass(frozen=True, slots=True)
+class Described:
+    """What is being read."""
+
+    source: str
+    info: StreamInfo
+    rate: float  # sets a second
+    channels: tuple[Channel, ...]
+    nominal: float | None  # Hz
+
+
 class Output(Protocol):
     """One form of output."""
 
-    def begin(self, source: str, info: StreamInfo, rate: float, engine: Engine) -> None:
+    def begin(self, source: Described) -> None:
         """The stream is known."""
         ...
 
@@ -54,9 +67,13 @@ class JsonLinesOutput:
     def __init__(self, out: TextIO) -> None:
         self._out = out
 
-    def begin(self, source: str, info: StreamInfo, rate: float, engine: Engine) -> None:
+    def begin(self, source: Described) -> None:
         """The source record."""
-        self._write(record.source_record(source, info, rate, engine.channels, engine.nominal))
+        self._write(
+            record.source_record(
+                source.source, source.info, source.rate, source.channels, source.nominal
+            )
+        )
 
     def batch(self, batch: Batch) -> None:
         """Window, pair and event records, in order of time within the run."""
@@ -99,7 +116,7 @@ class CsvOutput:
         self._writer = csv.writer(out, lineterminator="\r\n")
         self._out = out
 
-    def begin(self, source: str, info: StreamInfo, rate: float, engine: Engine) -> None:
+    def begin(self, source: Described) -> None:
         """The header."""
         self._writer.writerow(CSV_COLUMNS)
 
@@ -128,10 +145,12 @@ class PlainOutput:
     def __init__(self, out: TextIO) -> None:
         self._out = out
 
-    def begin(self, source: str, info: StreamInfo, rate: float, engine: Engine) -> None:
+    def begin(self, source: Described) -> None:
         """What is being watched."""
-        names = ", ".join(f"{c.name} [{c.unit}]" for c in engine.channels)
-        self._out.write(f"# {source}: {info.format}, {rate:.10g} sets/s, {names}\n")
+        names = ", ".join(f"{c.name} [{c.unit}]" for c in source.channels)
+        self._out.write(
+            f"# {source.source}: {source.info.format}, {source.rate:.10g} sets/s, {names}\n"
+        )
 
     def batch(self, batch: Batch) -> None:
         """A line each."""
@@ -180,11 +199,11 @@ class TableOutput:
         self._out = out
         self._events: list[Event] = []
         self._count = 0
-        self._first: tuple[str, StreamInfo, float, Engine] | None = None
+        self._first: Described | None = None
 
-    def begin(self, source: str, info: StreamInfo, rate: float, engine: Engine) -> None:
+    def begin(self, source: Described) -> None:
         """Keep for the heading."""
-        self._first = (source, info, rate, engine)
+        self._first = source
 
     def batch(self, batch: Batch) -> None:
         """Keep the events; the summaries gather the rest."""
@@ -203,11 +222,14 @@ class TableOutput:
         from rich.text import Text
 
         assert self._first is not None
-        source, info, rate, engine = self._first
+        first = self._first
         console = Console(file=self._out, highlight=False, width=None if _tty(self._out) else 110)
-        nominal = "" if engine.nominal is None else f", nominal {engine.nominal:g} Hz"
+        nominal = "" if first.nominal is None else f", nominal {first.nominal:g} Hz"
         console.print(
-            Text(f"{source}: {info.format}, {rate:.10g} sets/s{nominal}, {seconds:.3f} s")
+            Text(
+                f"{first.source}: {first.info.format}, {first.rate:.10g} sets/s{nominal}, "
+                f"{seconds:.3f} s"
+            )
         )
         table = Table(title=None, header_style="bold")
         for heading in ("channel", "true RMS", "least … most", "crest factor", "THD-F %"):

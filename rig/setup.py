@@ -9,7 +9,6 @@ import math
 import re
 import tomllib
 from dataclasses import dataclass
-from pathlib import Path
 from typing import Any
 
 from acquisition.stream import clean
@@ -17,7 +16,6 @@ from dsp.waveform import Kind
 from rig.errors import SetupError
 
 DEFAULT_LIMIT = 0.02  # an averaging meter misleads beyond 2 % (common practice, no source)
-LARGEST_FILE = 1 << 20  # bytes; a setup is a page or two
 
 Table = dict[str, Any]
 
@@ -60,34 +58,11 @@ class Setup:
         return cls()
 
 
-def load(path: Path) -> Setup:
-    """Read a setup file.
-
-    Raises:
-        SetupError: it is missing, not TOML, or says something that cannot be.
-    """
-    where = clean(path.name, 60)
-    try:
-        if path.stat().st_size > LARGEST_FILE:
-            raise SetupError(where, None, "is over a megabyte and no setup", "name a TOML file")
-        text = path.read_text(encoding="utf-8")
-    except UnicodeDecodeError:
-        raise SetupError(
-            where, None, "is not UTF-8 text", "name a TOML file; docs/setup.md has one"
-        ) from None
-    except OSError as error:
-        reason = error.strerror or "cannot be read"
-        raise SetupError(
-            clean(str(path), 120), None, reason, "check the path; docs/setup.md shows a setup"
-        ) from None
-    return parse(text, where)
-
-
 def parse(text: str, where: str) -> Setup:
     """Read a setup from its text; `where` names it in messages.
 
     Raises:
-        SetupError: as `load`.
+        SetupError: it is not TOML, or says something that cannot be.
     """
     try:
         table = tomllib.loads(text)

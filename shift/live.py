@@ -23,7 +23,8 @@ from dsp.window import Window
 from rig.channels import advice
 from rig.setup import Setup
 from rig.zero import ENOUGH, needs_zero, with_zero
-from shift.engine import Batch, Engine
+from shift.batch import Batch
+from shift.engine import Engine
 from shift.event import Event
 from shift.snapshot import ChannelView, Snapshot, Stage, Trend
 from shift.summary import Summary, with_run

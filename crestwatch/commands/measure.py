@@ -58,7 +58,7 @@ def run(options: argparse.Namespace) -> int:
     for sentence in measuring.notes:
         diagnostics.note(sentence)
     with measuring, Progress("measuring", measuring.bytes_total) as progress:
-        output.begin(str(options.recording), measuring.info, measuring.rate, measuring.engine)
+        output.begin(measuring.described(str(options.recording)))
         for batch in measuring.batches():
             output.batch(batch)
             progress.advance_to(measuring.bytes_read())

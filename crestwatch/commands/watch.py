@@ -117,10 +117,7 @@ def _print(watch: "Watch", options: argparse.Namespace) -> int:
     try:
         for batch in live.batches(over):
             if not introduced:
-                engine, info = live.engine, live.info
-                assert engine is not None
-                assert info is not None
-                output.begin(options.source, info, live.rate or 0.0, engine)
+                output.begin(watch.described(options.source))
                 for sentence in live.snapshot.advice:
                     diagnostics.note(sentence)
                 introduced = True

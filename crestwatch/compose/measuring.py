@@ -11,10 +11,12 @@ from acquisition.recordings.recording import Recording
 from acquisition.status import LinkState, ReaderStatus
 from acquisition.stream import StreamInfo
 from crestwatch.compose.sources import recording
+from crestwatch.output import Described
 from dsp.meters import BUILT_IN
 from rig.setup import Setup
 from rig.zero import needs_zero, with_zero
-from shift.engine import Batch, Engine
+from shift.batch import Batch
+from shift.engine import Engine
 from shift.summary import Summary, with_run
 
 
@@ -50,6 +52,10 @@ class Measuring:
         trace: TracebackType | None,
     ) -> None:
         self._recording.close()
+
+    def described(self, source: str) -> Described:
+        """What is being read, for an output."""
+        return Described(source, self.info, self.rate, self.engine.channels, self.engine.nominal)
 
     def bytes_read(self) -> int:
         """How far reading has come."""

@@ -12,10 +12,11 @@ from acquisition.stream import clean
 from crestwatch.diagnostics import UsageError
 from crestwatch.source import SerialSource, SimSource, Source, TcpSource
 from rig.setup import Setup
-from rig.setup import load as load_setup
+from rig.setup_file import load as load_setup
 from sim import device as sim_device
 from sim import scenes as sim_scenes
 from sim.device import LoggerSpec
+from sim.errors import SimError
 from sim.faults import parse as parse_faults
 
 DEFAULT_BAUD = 115200  # what most boards' examples use; USB boards ignore it
@@ -128,8 +129,28 @@ def logger_spec(
     """A simulated logger.
 
     Raises:
-        SimError: there is no such scene, or a fault does not read.
+        UsageError: there is no such scene, or a fault does not read.
     """
+    try:
+        return _spec(scene, wire, rate, bits, noise, ppm, drift, seed, faults)
+    except SimError as error:
+        usage = UsageError(str(error))
+        for advice in getattr(error, "__notes__", ()):
+            usage.add_note(advice)
+        raise usage from None
+
+
+def _spec(
+    scene: str,
+    wire: str,
+    rate: float | None,
+    bits: int,
+    noise: float,
+    ppm: float,
+    drift: float,
+    seed: int,
+    faults: str,
+) -> LoggerSpec:
     found = sim_scenes.find(scene)
     # Text is long: at 8000 sets a second it would not fit a common serial line.
     usual = 2000.0 if wire == "text" else 8000.0

@@ -1,5 +1,6 @@
 """A live watch, opened: its source, its engine, and the screen for it."""
 
+import sys
 from collections.abc import Mapping
 from types import TracebackType
 from typing import Self
@@ -11,6 +12,7 @@ from acquisition.status import LinkState, ReaderStatus
 from acquisition.stream import clean
 from crestwatch import diagnostics
 from crestwatch.compose.sources import opener, recording
+from crestwatch.output import Described
 from crestwatch.source import FileSource, SimSource, Source
 from dsp.meters import BUILT_IN
 from rig.setup import Setup
@@ -40,6 +42,13 @@ class Watch:
         """The reader's latest state."""
         return self._source.status
 
+    def described(self, source: str) -> Described:
+        """What is being watched, for an output; the engine stands once a Batch has come."""
+        engine, info = self.live.engine, self.live.info
+        assert engine is not None
+        assert info is not None
+        return Described(source, info, self.live.rate or 0.0, engine.channels, engine.nominal)
+
     def outcome(self) -> int:
         """The exit code, and what there is to say at the end on stderr."""
         if self.live.failure is not None:
@@ -67,6 +76,11 @@ class Watch:
         return diagnostics.DONE
 
 
+def plan_for(text: str, setup: Setup, rate: float | None = None, setup_name: str = "") -> WatchPlan:
+    """What is watched and how, with every card in force."""
+    return WatchPlan(clean(text, 60), setup, BUILT_IN, rate, clean(setup_name))
+
+
 def open_watch(
     source: Source,
     text: str,
@@ -85,7 +99,7 @@ def open_watch(
         UsageError: an option does not fit the source.
         LinkError, RecordingError: it cannot be opened.
     """
-    plan = WatchPlan(clean(text, 60), setup, BUILT_IN, rate, clean(setup_name))
+    plan = plan_for(text, setup, rate, setup_name)
     if isinstance(source, FileSource):
         return Watch(Replay(recording(source.path, rate, scale, format_), speed), plan)
     decoder = AutoDecoder(format_ or setup.format, rate=rate)
@@ -111,5 +125,8 @@ def show_screen(watch: Watch, theme: str | None, glyphs: str, length: float | No
         cautions=(CAUTION_TITLE, *CAUTIONS),
         leave_after=length,
     )
+    if not sys.stderr.isatty():
+        # The screen is written to where errors go; those may have been sent to a file.
+        sys.__stderr__ = sys.__stdout__  # type: ignore[misc]
     app.run()
     live.stop()
