@@ -1,82 +1,119 @@
-"""A logger's own bytes as captured to a file, read through the same decoders as a live stream."""
+"""A logger's own bytes, captured to a file: decoded as they would have been live."""
 
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 from acquisition.autodecode import AutoDecoder
 from acquisition.block import Block
-from acquisition.recordings.faults import absent, refused
+from acquisition.recordings.readable import begins, damaged, refused, shown, size_of, unreadable
 from acquisition.recordings.recording import RecordingOptions
 from acquisition.stream import StreamInfo
 
-PIECE = 1 << 20  # bytes
-SNIFFED = 4 << 20  # bytes in which a format must show
+PIECE = 1 << 18  # bytes
+# A crestwire logger tells its rate once a second; 16 MB hold some seconds of the fastest.
+LOOKED_AT = 16 << 20  # bytes, until the format and the rate must have shown
+ENOUGH = 1 << 18  # bytes after which a format without a rate is not going to tell it
 
 
 class CaptureRecording:
-    """Captured bytes."""
+    """Captured bytes as Blocks, with the decoder's own account of what is missing."""
 
     def __init__(self, path: Path, options: RecordingOptions) -> None:
-        """Find out the format and the rate.
+        """Find out what the bytes are.
 
         Raises:
-            RecordingAbsent: it may not be read.
-            RecordingRefused: it is no stream of samples, or does not tell its rate.
+            RecordingAbsent, RecordingRefused: not to be read, no stream of samples, or the rate
+                must be told.
+            NotSamples: the format that was asked for does not exist.
         """
         self.path = path
+        self.bytes_total = size_of(path)
         self.sets: int | None = None
         self._options = options
         self._done = 0
-        try:
-            self.bytes_total = path.stat().st_size
-            info = self._find()
-        except OSError as error:
-            raise absent(path, error) from None
-        rate = options.rate or info.rate
+        name = shown(path)
+        found = self._look(name)
+        rate = options.rate or found.rate
         if rate is None:
             raise refused(
-                path,
-                f"is a capture of a {info.format} stream, which does not tell its sample rate",
-                "give it with --rate HZ",
+                f"{name} holds a {found.format} stream, which does not tell its sample rate",
+                "tell it, for example: --rate 8000",
             )
-        import dataclasses
-
-        self.info = dataclasses.replace(info, rate=rate)
+        self.info = replace(found, rate=rate)
 
     def blocks(self) -> Iterator[Block]:
-        """See Recording."""
+        """Blocks in order. Raises RecordingDamaged on a fault of the disk."""
         decoder = self._decoder()
-        with self.path.open("rb") as file:
-            while data := file.read(PIECE):
-                yield from decoder.feed(data, 0.0)
-                self._done += len(data)
-        yield from decoder.finish()
+        self._done = 0
+        given = 0
+        try:
+            with self.path.open("rb") as file:
+                while data := file.read(PIECE):
+                    self._done += len(data)
+                    for block in decoder.feed(data, float("nan")):
+                        given += block.sets
+                        yield block
+        except OSError as error:
+            raise unreadable(self.path, error) from None
+        for block in decoder.finish():
+            given += block.sets
+            yield block
+        if not given:
+            raise damaged(
+                decoder.problem or f"{shown(self.path)} holds no whole sample",
+                "check that the capture is whole; `crestwatch identify` shows what it looks like",
+            )
 
     def bytes_read(self) -> int:
-        """See Recording."""
+        """How far reading has come."""
         return self._done
 
     def close(self) -> None:
-        """See Recording."""
+        """Nothing stays open."""
 
     def _decoder(self) -> AutoDecoder:
-        return AutoDecoder(self._options.format, rate=self._options.rate)
+        options = self._options
+        return AutoDecoder(
+            options.format,
+            rate=options.rate,
+            channels=options.channels,
+            byte_order=options.byte_order,
+        )
 
-    def _find(self) -> StreamInfo:
+    def _look(self, name: str) -> StreamInfo:
+        """What the first bytes say of the stream."""
         decoder = self._decoder()
         read = 0
-        with self.path.open("rb") as file:
-            while (data := file.read(1 << 16)) and read < SNIFFED:
-                decoder.feed(data, 0.0)
-                read += len(data)
-                if decoder.info is not None and (decoder.info.rate or read > 1 << 18):
-                    return decoder.info
+        try:
+            with self.path.open("rb") as file:
+                head = file.read(64)
+                file.seek(0)
+                while read < LOOKED_AT and (data := file.read(1 << 16)):
+                    read += len(data)
+                    decoder.feed(data, float("nan"))
+                    info = decoder.info
+                    if info is not None and (
+                        info.rate or self._options.rate or self._settled(info, read)
+                    ):
+                        return info
+        except OSError as error:
+            raise unreadable(self.path, error) from None
         decoder.finish()
         if decoder.info is not None:
             return decoder.info
-        raise refused(
-            self.path,
-            decoder.problem or "is no recording and no stream of samples that is known",
-            "name a CSV, WAV, FLAC, NPZ, NPY or COMTRADE .cfg file, or a logger's captured bytes",
-            "give --format crestwire, text or raw if it is a capture",
-        )
+        raise _unknown(name, head, decoder.problem)
+
+    def _settled(self, info: StreamInfo, read: int) -> bool:
+        return info.format != "crestwire" and read >= ENOUGH
+
+
+def _unknown(name: str, head: bytes, problem: str) -> Exception:
+    if problem.startswith("this looks like raw"):
+        return refused(f"{name}: {problem}")
+    return refused(
+        f"{name} is no recording of a known kind and no stream of samples; it begins with"
+        f" {begins(head)}",
+        "known are CSV, WAV, FLAC, NPZ, NPY, COMTRADE (.cfg) and a logger's captured bytes",
+        "if a logger sent it, tell which: --format crestwire, text or raw:u16:2:little",
+    )

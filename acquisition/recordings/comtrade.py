@@ -1,367 +1,370 @@
-"""COMTRADE (IEEE C37.111-1991, 1999, 2013): a `.cfg` that describes and a `.dat` that holds.
+"""COMTRADE recordings: a .cfg with its .dat, or both in one .cff.
 
-An own reader, because the data are read piece by piece and every claim of the `.cfg` is checked
-against the size of the `.dat` first; field order from the standard (from memory, not read) and
-checked in tests against an independent reader and real recordings.
+Read piece by piece, whatever the length. What the .cfg claims is compared with what the .dat
+holds before anything is believed: how many sets, and that the sets are numbered one by one. Missing
+values and missing numbers become gaps. Status channels are passed over.
 """
 
-import datetime
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from acquisition.block import Block
-from acquisition.recordings.faults import absent, damaged, refused
+from acquisition.recordings.comtrade_ascii import read_ascii
+from acquisition.recordings.comtrade_cfg import Analog, Description, read_description
+from acquisition.recordings.placing import SETS_AT_A_TIME, Placer, unique
+from acquisition.recordings.readable import (
+    absent,
+    beside,
+    damaged,
+    refused,
+    shown,
+    size_of,
+    unreadable,
+)
 from acquisition.recordings.recording import RecordingOptions
-from acquisition.stream import ChannelHint, StreamInfo, clean
+from acquisition.recordings.timing import find_timing
+from acquisition.recordings.wav import chosen_rate
+from acquisition.stream import ChannelHint, StreamInfo
 
-SETS_AT_ONCE = 1 << 16
-MOST_CHANNELS = 999_999  # six digits in the standard
-_TYPES = {"BINARY": "<i2", "BINARY32": "<i4", "FLOAT32": "<f4"}
-_MISSING_ASCII = 99999
-
-
-@dataclass(frozen=True, slots=True)
-class _Analog:
-    name: str
-    unit: str
-    gain: float
-    offset: float  # value = gain * x + offset
-    low: float
-    high: float
-    side: str
-    skew_s: float
+# numpy type and the number that stands for a missing value
+_BINARY: dict[str, tuple[str, int | None]] = {
+    "BINARY": ("<i2", -(2**15)),
+    "BINARY32": ("<i4", -(2**31)),
+    "FLOAT32": ("<f4", None),  # NaN or infinite
+}
+LARGEST_CFG = 16 << 20  # bytes; 9999 channels take about 1 MB
+_SECTION = re.compile(rb"^-+\s*file type:\s*([A-Za-z]+)\s*([A-Za-z0-9]*)\s*:?\s*(\d*)\s*-+\s*$")
 
 
-@dataclass(frozen=True, slots=True)
-class _Config:
-    station: str
-    revision: int
-    analogs: tuple[_Analog, ...]
-    digitals: int
-    nominal: float | None
-    rates: tuple[tuple[float, int], ...]  # (sets a second, last set's number)
-    started: str | None
-    type: str
+@dataclass(frozen=True, slots=True, eq=False)
+class _Sets:
+    """A piece of the data."""
+
+    numbers: npt.NDArray[np.int64]  # (n,) as written beside the samples
+    times: npt.NDArray[np.float64]  # (n,) in the file's unit
+    codes: npt.NDArray[Any]  # (channels, n)
+    good: npt.NDArray[np.bool_]  # (channels, n): not missing
 
 
 class ComtradeRecording:
-    """A `.cfg` and its `.dat`."""
+    """A COMTRADE recording as Blocks of its codes, with gain and offset as the file says."""
 
     def __init__(self, path: Path, options: RecordingOptions) -> None:
-        """Read the description and compare it with the data.
+        """Read the description, find the data, compare the two.
 
+        Args:
+            path: of the .cfg or .cff.
         Raises:
-            RecordingAbsent, RecordingRefused: see `open_recording`.
+            RecordingAbsent, RecordingRefused: a part is missing or not to be read, or they do not
+                fit each other.
         """
         self.path = path
-        config = _Reader(path).config()
-        self._config = config
-        self._data = _data_beside(path)
-        self.bytes_total = self._data.stat().st_size
-        self._done = 0
-        promised = config.rates[-1][1]
-        notes: list[str] = []
-        if config.type == "ASCII":
-            # A line is at least its number, time and one digit a channel.
-            most = self.bytes_total // (2 * (2 + len(config.analogs)))
+        self._name = shown(path)
+        if path.suffix.lower() == ".cff":
+            self._said, self._data, place = _from_single(path, self._name)
         else:
-            most = self.bytes_total // self._record().itemsize
-            if self.bytes_total % self._record().itemsize:
-                notes.append("the last record of the data is cut short")
-        if promised > most:
-            notes.append(f"the .cfg promises {promised} sets; the data can hold {most}")
-        elif config.type != "ASCII" and promised < most:
-            notes.append(f"the .cfg promises {promised} sets; the data hold {most}, all are read")
-        self._promised = promised
-        rate = options.rate or config.rates[0][0]
-        if len({r for r, _ in config.rates}) > 1:
-            shown = ", ".join(f"{r:g}" for r, _ in config.rates)
-            raise refused(
-                path,
-                f"changes its sample rate on the way ({shown} Hz)",
-                "export one stretch of constant rate, and measure that",
-            )
-        if rate <= 0.0:
-            raise refused(path, "gives no sample rate", "give it with --rate HZ")
-        sides = sorted({a.side for a in config.analogs if a.side})
-        if sides:
-            named = {"P": "primary", "S": "secondary"}
-            notes.append(
-                "values are " + " and ".join(named.get(s, s) for s in sides) + " ones, as it says"
-            )
-        self.sets: int | None = min(promised, most) if config.type == "ASCII" else most
+            self._said = read_description(_text(path), self._name)
+            data = beside(path, ".dat")
+            if data is None:
+                raise absent(path.with_suffix(".dat"), f"which {path.name} describes")
+            self._data = data
+            place = (0, size_of(data), 1)
+        self._begin, self._end, self._first_line = place
+        self.bytes_total = self._end - self._begin
+        self._done = 0
+        notes: list[str] = []
+        self._damage = ""
+        self._promised = self._said.rates[-1][1]
+        self.sets: int | None = self._count_sets(notes)
+        first = self._first()
+        self._numbered = self._check_numbers(first, notes)
+        self._kept = self._alive(first, notes)
+        rate = self._rate(options, first, notes)
+        analogs = [self._said.analogs[k] for k in self._kept]
+        names = unique([one.name for one in self._said.analogs])
+        notes += _sides(analogs)
+        if any(one.a == 0.0 for one in analogs):
+            notes.append("A channel with the multiplier a = 0 reads its offset b throughout.")
+        whole = first.codes.dtype.kind == "i" or bool(
+            np.all(np.isfinite(first.codes)) and np.all(first.codes == np.rint(first.codes))
+        )
         self.info = StreamInfo(
             format="comtrade",
             channels=tuple(
-                ChannelHint(
-                    name=a.name,
-                    unit=a.unit,
-                    gain=a.gain,
-                    offset_codes=a.offset / a.gain if a.gain else 0.0,
-                    skew_s=a.skew_s,
-                    step=None if config.type == "FLOAT32" else 1.0,
-                )
-                for a in config.analogs
+                _hint(one, names[k], whole, analogs[0].skew_s)
+                for k, one in zip(self._kept, analogs, strict=True)
             ),
             rate=rate,
-            sample_type={"ASCII": "f64", "BINARY": "i16", "BINARY32": "i32"}.get(
-                config.type, "f32"
+            sample_type={"ASCII": "float64", "BINARY": "i16", "BINARY32": "i32"}.get(
+                self._said.type, "f32"
             ),
-            nominal_hz=config.nominal,
-            started=config.started,
+            byte_order="" if self._said.type == "ASCII" else "little",
+            nominal_hz=self._said.nominal,
+            started=self._said.started,
+            unit_id=self._said.station,
             notes=tuple(notes),
         )
 
     def blocks(self) -> Iterator[Block]:
-        """See Recording."""
-        index = lost = 0
-        pieces = self._ascii() if self._config.type == "ASCII" else self._binary()
-        for codes, good in pieces:
-            bounds = np.flatnonzero(
-                np.diff(np.concatenate(([False], good, [False])).astype(np.int8))
-            )
-            done = 0
-            for a, b in bounds.reshape(-1, 2).tolist():
-                lost += a - done
-                done = b
-                yield Block(
-                    codes=np.ascontiguousarray(codes[:, a:b]),
-                    index=index + lost,
-                    lost_before=lost,
-                    gap_before=lost > 0,
-                )
-                index += lost + b - a
-                lost = 0
-            lost += codes.shape[1] - done
-        self._done = self.bytes_total
-        if index + lost < self._promised:
-            raise damaged(
-                self._data,
-                f"ends after {index + lost} sets; the .cfg promises {self._promised}",
-            )
+        """Blocks in order. Raises RecordingDamaged where the data end early or do not read."""
+        placer = Placer()
+        last: int | None = None
+        flat = np.array([self._said.analogs[k].a == 0.0 for k in self._kept])
+        given = 0
+        for piece in self._pieces():
+            codes = piece.codes[self._kept]
+            if flat.any():
+                codes[flat] = 0  # value = b, whatever the code
+            good = np.asarray(piece.good[self._kept].all(axis=0))
+            given += len(good)
+            if not self._numbered:
+                yield from placer.place_good(codes, good)
+                continue
+            before = int(piece.numbers[0]) - 1 if last is None else last
+            # Numbers are of 32 bits and may wrap.
+            steps = np.diff(piece.numbers, prepend=before) & 0xFFFFFFFF
+            last = int(piece.numbers[-1])
+            cuts = np.flatnonzero(steps != 1).tolist()
+            for a, b in zip([0, *cuts], [*cuts, len(steps)], strict=True):
+                if b == a:
+                    continue
+                if steps[a] != 1:
+                    # Backwards or standing still: nobody knows.
+                    placer.miss(int(steps[a]) - 1 if 1 < steps[a] < 2**31 else None)
+                yield from placer.place_good(np.ascontiguousarray(codes[:, a:b]), good[a:b])
+        if self._said.type == "ASCII" and given < self._promised:
+            self._damage = self._cut_short(given)
+        if self._damage:
+            raise damaged(self._damage, "what is there was read")
 
     def bytes_read(self) -> int:
-        """See Recording."""
+        """How far reading has come."""
         return self._done
 
     def close(self) -> None:
-        """See Recording."""
+        """Nothing stays open between two pieces."""
 
-    def _record(self) -> np.dtype[np.void]:
-        config = self._config
-        words = (config.digitals + 15) // 16
+    # -- what there is ----------------------------------------------------------------------
+
+    def _count_sets(self, notes: list[str]) -> int | None:
+        """How many sets the data hold, against what was promised."""
+        if self._said.type == "ASCII":
+            return None
+        size = self._record().itemsize
+        held, over = divmod(self.bytes_total, size)
+        if held == 0:
+            raise refused(
+                f"{shown(self._data)} is shorter ({self.bytes_total} bytes) than one set of"
+                f" {len(self._said.analogs)} analogue and {self._said.status} status channels"
+                f" ({size} bytes)",
+                "check that the two files belong together and were copied whole",
+            )
+        if held < self._promised:
+            self._damage = self._cut_short(held)
+            notes.append(self._damage + ".")
+        elif held > self._promised:
+            notes.append(
+                f"The description promises {self._promised} sets, the data hold {held}:"
+                " all are read."
+            )
+        elif over:
+            notes.append(f"{over} bytes behind the last set were passed over.")
+        return held
+
+    def _cut_short(self, held: int) -> str:
+        return (
+            f"{shown(self._data)} is cut short: the description promises {self._promised} sets,"
+            f" the data hold {held}"
+        )
+
+    def _first(self) -> _Sets:
+        first = next(self._pieces(), None)
+        if first is None:
+            raise refused(f"{shown(self._data)} holds no set", "check that it was copied whole")
+        return first
+
+    def _check_numbers(self, first: _Sets, notes: list[str]) -> bool:
+        """Whether the sets are numbered; refuse data that are not laid out as described."""
+        numbers = first.numbers[:100]
+        if not numbers.any():
+            notes.append("The sets carry no numbers, so missing ones would not show.")
+            return False
+        steps = np.diff(numbers)
+        if len(steps) and np.count_nonzero(steps == 1) < 0.5 * len(steps):
+            k = int(np.flatnonzero(steps != 1)[0])
+            raise refused(
+                f"{shown(self._data)} is not laid out as the description says: set {k + 2}"
+                f" is numbered {numbers[k + 1]}, the one before {numbers[k]}",
+                f"check the counts of channels and the file type ({self._said.type}) in the"
+                " description",
+            )
+        return True
+
+    def _alive(self, first: _Sets, notes: list[str]) -> list[int]:
+        """Channels that have values; one that never has any would make a gap of everything."""
+        alive = first.good.any(axis=1)
+        if not alive.any():
+            raise refused(
+                f"{shown(self._data)} marks every value as missing", "check the recorder's export"
+            )
+        dead = [self._said.analogs[k].name for k in np.flatnonzero(~alive).tolist()]
+        if dead:
+            notes.append(f"Left out, as all values are missing: {', '.join(dead[:8])}.")
+        return [int(k) for k in np.flatnonzero(alive)]
+
+    def _rate(self, options: RecordingOptions, first: _Sets, notes: list[str]) -> float:
+        rates = sorted({rate for rate, _ in self._said.rates})
+        if len(rates) > 1:
+            parts = ", ".join(f"{rate:g} Hz to set {last}" for rate, last in self._said.rates[:4])
+            raise refused(
+                f"{self._name} changes its sample rate on the way ({parts})",
+                "export a stretch of one rate as a recording of its own",
+            )
+        if rates[0] > 0.0:
+            return chosen_rate(options, rates[0], notes)
+        if options.rate is not None:
+            return options.rate
+        timing = find_timing(first.times * self._said.time_unit)
+        if timing is None:
+            raise refused(
+                f"{self._name} gives no sample rate, and the times beside the samples tell none",
+                "tell it, for example: --rate 4800",
+            )
+        notes.append(f"The rate, {timing.rate:.6g} Hz, was taken from the times of the samples.")
+        return timing.rate
+
+    # -- the data ---------------------------------------------------------------------------
+
+    def _record(self) -> np.dtype[Any]:
+        """One set of the binary kinds: number, time, analogue values, status bits by 16."""
+        kind = _BINARY[self._said.type][0]
         return np.dtype(
             [
                 ("n", "<u4"),
                 ("t", "<u4"),
-                ("x", _TYPES[config.type], (len(config.analogs),)),
-                ("d", "<u2", (words,)),
+                ("x", kind, (len(self._said.analogs),)),
+                ("d", "<u2", ((self._said.status + 15) // 16,)),
             ]
         )
 
-    def _binary(self) -> Iterator[tuple[npt.NDArray[np.number], npt.NDArray[np.bool_]]]:
+    def _pieces(self) -> Iterator[_Sets]:
+        self._done = 0
+        if self._said.type != "ASCII":
+            yield from self._binary()
+            return
+        limits = [one.high for one in self._said.analogs]
+        place = (self._begin, self._end, self._first_line)
+        for done, numbers, times, values, good in read_ascii(
+            self._data, place, limits, self._said.status
+        ):
+            self._done = done
+            yield _Sets(numbers, times, values, good)
+
+    def _binary(self) -> Iterator[_Sets]:
         record = self._record()
-        missing = {"BINARY": -(2**15), "BINARY32": -(2**31)}.get(self._config.type)
-        with self._data.open("rb") as file:
-            while data := file.read(SETS_AT_ONCE * record.itemsize):
-                rows = np.frombuffer(data, record, len(data) // record.itemsize)
-                codes = np.ascontiguousarray(rows["x"].T)
-                if missing is None:
-                    good = np.isfinite(codes).all(axis=0)
-                else:
-                    good = (codes != missing).all(axis=0)
-                yield codes, np.asarray(good)
-                self._done += len(data)
-
-    def _ascii(self) -> Iterator[tuple[npt.NDArray[np.number], npt.NDArray[np.bool_]]]:
-        analogs = len(self._config.analogs)
-        line = 0
-        with self._data.open("rb") as file:
-            while True:
-                rows: list[list[float]] = []
-                for raw in file:
-                    line += 1
-                    if raw.strip(b"\x1a \r\n"):
-                        rows.append(self._fields(raw, line, analogs))
-                    if len(rows) >= SETS_AT_ONCE:
-                        break
-                if not rows:
-                    return
-                codes = np.array(rows).T
-                self._done = file.tell()
-                yield codes, np.asarray((codes != _MISSING_ASCII).all(axis=0))
-
-    def _fields(self, raw: bytes, line: int, analogs: int) -> list[float]:
-        fields = raw.split(b",")
+        missing = _BINARY[self._said.type][1]
+        left = self.sets or 0
+        # A piece of about 4 MB, however many channels there are.
+        most = max(1, min(SETS_AT_A_TIME, (4 << 20) // record.itemsize))
         try:
-            if len(fields) < 2 + analogs:
-                raise ValueError
-            # A blank value is a missing one.
-            return [float(f) if f.strip() else _MISSING_ASCII for f in fields[2 : 2 + analogs]]
-        except ValueError:
-            raise damaged(
-                self._data,
-                f"line {line} does not hold {analogs} values: {clean(raw.decode('latin-1'))!r}",
-            ) from None
-
-
-class _Reader:
-    """Reads a `.cfg` line by line and knows where it is."""
-
-    def __init__(self, path: Path) -> None:
-        self._path = path
-        try:
-            raw = path.read_bytes()[: 8 << 20]
+            with self._data.open("rb") as file:
+                file.seek(self._begin)
+                while left:
+                    data = file.read(min(left, most) * record.itemsize)
+                    rows = np.frombuffer(data, record, len(data) // record.itemsize)
+                    if not len(rows):
+                        raise damaged(f"{shown(self._data)} became shorter while it was read")
+                    left -= len(rows)
+                    self._done += len(data)
+                    codes = np.ascontiguousarray(rows["x"].T)
+                    good = np.isfinite(codes) if missing is None else codes != missing
+                    yield _Sets(
+                        rows["n"].astype(np.int64), rows["t"].astype(np.float64), codes, good
+                    )
         except OSError as error:
-            raise absent(path, error) from None
-        try:
-            text = raw.decode("utf-8-sig")
-        except UnicodeDecodeError:
-            text = raw.decode("latin-1")
-        self._lines = text.splitlines()
-        self._at = 0
-
-    def config(self) -> _Config:
-        """The whole description."""
-        head = self._next("station, device, revision")
-        revision = 1991
-        if len(head) > 2 and head[2]:
-            revision = int(self._number(head[2], "revision year"))
-        counts = self._next("channel counts")
-        total = int(self._number(counts[0], "total channels"))
-        analogs = self._count(counts, 1, "A")
-        digitals = self._count(counts, 2, "D")
-        if analogs + digitals != total:
-            raise self._wrong(f"{total} channels are not {analogs} analogue and {digitals} status")
-        if analogs == 0:
-            raise self._wrong("there is no analogue channel to measure")
-        channels = tuple(self._analog() for _ in range(analogs))
-        for _ in range(digitals):
-            self._next("status channel")
-        frequency = self._next("line frequency")
-        nominal = self._number(frequency[0], "line frequency") if frequency[0] else 0.0
-        count = int(self._number(self._next("number of rates")[0], "number of rates"))
-        if not 0 <= count <= 1000:
-            raise self._wrong(f"{count} sample rates cannot be")
-        rates = []
-        for _ in range(max(1, count)):
-            rate, last = self._several("sample rate", 2)
-            rates.append((self._number(rate, "sample rate"), int(self._number(last, "last set"))))
-        started = self._moment(self._next("time of the first sample"))
-        self._next("time of the trigger")
-        kind = self._next("data type")[0].upper()
-        if kind != "ASCII" and kind not in _TYPES:
-            raise self._wrong(f"data type {clean(kind, 20)} is not known")
-        return _Config(
-            station=clean(head[0]),
-            revision=revision,
-            analogs=_named_apart(channels),
-            digitals=digitals,
-            nominal=nominal if 40.0 <= nominal <= 70.0 else None,
-            rates=tuple(rates),
-            started=started,
-            type=kind,
-        )
-
-    def _analog(self) -> _Analog:
-        fields = self._next("analogue channel")
-        if len(fields) < 10:
-            raise self._wrong(f"an analogue channel has 10 or more fields, here are {len(fields)}")
-        name = clean(fields[1]) or f"ch{self._at}"
-        gain = self._number(fields[5], "multiplier a")
-        offset = self._number(fields[6], "offset b")
-        skew = self._number(fields[7], "skew") if fields[7] else 0.0
-        side = fields[12][:1].upper() if len(fields) > 12 else ""
-        return _Analog(
-            name=name,
-            unit=clean(fields[4], 12),
-            gain=gain,
-            offset=offset,
-            low=self._number(fields[8], "least value") if fields[8] else 0.0,
-            high=self._number(fields[9], "largest value") if fields[9] else 0.0,
-            side=side,
-            skew_s=skew * 1e-6,
-        )
-
-    def _moment(self, fields: list[str]) -> str | None:
-        """The first sample's time as ISO 8601; None when it does not read."""
-        try:
-            first, second, year = (int(n) for n in fields[0].split("/"))
-            hour, minute, rest = fields[1].split(":")
-            seconds = float(rest)
-        except (ValueError, IndexError):
-            return None
-        # 1991 wrote month/day, later editions day/month.
-        day, month = (second, first) if year < 100 or second > 12 else (first, second)
-        year += 1900 if year < 100 else 0
-        try:
-            moment = datetime.datetime(year, month, day, int(hour), int(minute))
-        except ValueError:
-            return None
-        return (moment + datetime.timedelta(seconds=seconds)).isoformat()
-
-    def _count(self, fields: list[str], at: int, letter: str) -> int:
-        text = fields[at].upper() if len(fields) > at else ""
-        if not text.endswith(letter) or not text[:-1].strip().isdigit():
-            raise self._wrong(f"a channel count such as 4{letter} is missing")
-        count = int(text[:-1])
-        if count > MOST_CHANNELS:
-            raise self._wrong(f"{count} channels cannot be")
-        return count
-
-    def _several(self, what: str, least: int) -> list[str]:
-        fields = self._next(what)
-        if len(fields) < least:
-            raise self._wrong(f"{what}: {least} fields are needed, here are {len(fields)}")
-        return fields
-
-    def _next(self, what: str) -> list[str]:
-        if self._at >= len(self._lines):
-            self._at += 1
-            raise self._wrong(f"ends before the {what}")
-        line = self._lines[self._at]
-        self._at += 1
-        return [field.strip() for field in line.split(",")]
-
-    def _number(self, text: str, what: str) -> float:
-        try:
-            number = float(text)
-        except ValueError:
-            raise self._wrong(f"{what} {clean(text, 20)!r} is not a number") from None
-        if not abs(number) < 1e15:
-            raise self._wrong(f"{what} {clean(text, 20)} is out of range")
-        return number
-
-    def _wrong(self, what: str) -> Exception:
-        return refused(
-            self._path, f"line {self._at}: {what}", "check that this is a whole COMTRADE .cfg"
-        )
+            raise unreadable(self._data, error) from None
 
 
-def _named_apart(channels: tuple[_Analog, ...]) -> tuple[_Analog, ...]:
-    """Channels of one name get a number, so that each can be spoken of."""
-    import dataclasses
-
-    seen: dict[str, int] = {}
-    out = []
-    for channel in channels:
-        seen[channel.name] = seen.get(channel.name, 0) + 1
-        n = seen[channel.name]
-        out.append(channel if n == 1 else dataclasses.replace(channel, name=f"{channel.name} #{n}"))
-    return tuple(out)
-
-
-def _data_beside(path: Path) -> Path:
-    for suffix in (".dat", ".DAT", ".Dat"):
-        candidate = path.with_suffix(suffix)
-        if candidate.is_file():
-            return candidate
-    raise refused(
-        path,
-        f"has no {path.with_suffix('.dat').name} beside it",
-        "a COMTRADE recording is two files; copy both",
+def _hint(one: Analog, name: str, whole: bool, skew_of_first: float) -> ChannelHint:
+    gain = one.a * one.worth
+    ends = (abs(one.low), abs(one.high))
+    # Some recorders write here what a converter can give, others what the recording happens to
+    # hold. Only powers of two are taken for a converter's rails.
+    rails = all(end > 1 and np.log2(end + add) % 1 == 0 for end in ends for add in [end % 2])
+    return ChannelHint(
+        name=name,
+        unit=one.unit,
+        gain=gain if gain else 1.0,
+        offset_codes=one.b / one.a if one.a else one.b * one.worth,
+        rails=(one.low, one.high) if rails and one.low < one.high else None,
+        skew_s=one.skew_s - skew_of_first,
+        step=1.0 if whole else None,
     )
+
+
+def _sides(analogs: list[Analog]) -> list[str]:
+    """Which side of its transformer each channel's values are of, in a sentence."""
+    told = [one for one in analogs if one.side]
+    if not told:
+        return []
+    words = {"P": "primary", "S": "secondary"}
+    sides = {one.side for one in told}
+    if len(sides) == 1:
+        return [f"Values are {words[told[0].side]} ones, as the file says."]
+    secondary = ", ".join(one.name for one in told if one.side == "S")
+    return [f"As the file says, these are secondary values, the others primary: {secondary}."]
+
+
+def _text(path: Path) -> str:
+    if size_of(path) > LARGEST_CFG:
+        raise refused(f"{shown(path)} is too large for a description", "name the .cfg")
+    return _decoded(path.read_bytes())
+
+
+def _decoded(raw: bytes) -> str:
+    try:
+        return raw.decode("utf-8-sig")
+    except UnicodeDecodeError:
+        return raw.decode("latin-1")
+
+
+def _from_single(path: Path, name: str) -> tuple[Description, Path, tuple[int, int, int]]:
+    """The parts of a .cff: description, and the data's begin, end and first line."""
+    size = size_of(path)
+    sections: list[tuple[bytes, bytes, int, int, int]] = []  # kind, type, line, begin, length
+    with path.open("rb") as file:
+        line, at = 0, 0
+        while at < size and at < LARGEST_CFG + 4096:
+            text = file.readline(1 << 16)
+            line += 1
+            at += len(text)
+            found = _SECTION.match(text.strip())
+            if found is None:
+                continue
+            sections.append((found[1].upper(), found[2].upper(), line, at, int(found[3] or 0)))
+            if found[1].upper() == b"DAT":
+                break
+        kinds = {kind: k for k, (kind, *_) in enumerate(sections)}
+        if b"CFG" not in kinds or b"DAT" not in kinds:
+            raise refused(
+                f"{name} lacks the section {'CFG' if b'CFG' not in kinds else 'DAT'} of a .cff",
+                "check that it was copied whole, or name the .cfg of a pair",
+            )
+        _, _, first_line, begin, _ = sections[kinds[b"CFG"]]
+        following = next((one for one in sections if one[3] > begin), None)
+        assert following is not None  # DAT comes after CFG or the loop had not ended
+        file.seek(begin)
+        raw = file.read(following[3] - begin)
+    raw = raw.rstrip()
+    raw = raw[: raw.rfind(b"\n") + 1]  # less the line that begins the next section
+    said = read_description(_decoded(raw), name, first_line + 1)
+    *_, data_line, data, length = sections[kinds[b"DAT"]]
+    if length and said.type != "ASCII" and data + length < size:
+        size = data + length
+    return said, path, (data, size, data_line + 1)

@@ -18,17 +18,20 @@ _MARKS = (
 
 
 class TextFile:
-    """A text file read as UTF-8 bytes with plain newlines."""
+    """A text file, or a part of one, read as UTF-8 bytes with plain newlines."""
 
-    def __init__(self, path: Path) -> None:
+    def __init__(self, path: Path, begin: int = 0, end: int | None = None) -> None:
+        """Look at the encoding and the line ends. `begin`, `end`: of the part, in bytes."""
         self.path = path
         self.bytes_read = 0
+        self._end = end
         with path.open("rb") as file:
-            head = file.read(HEAD)
+            file.seek(begin)
+            head = file.read(HEAD if end is None else min(HEAD, end - begin))
         mark, self.wide = next(
             ((mark, name) for mark, name in _MARKS if head.startswith(mark)), (b"", "")
         )
-        self._skip = len(mark)
+        self._skip = begin + len(mark)
         # A lone carriage return ends lines where no newline does.
         wide_newline = "\n".encode(self.wide) if self.wide else b"\n"
         self._returns = wide_newline not in head
@@ -46,7 +49,7 @@ class TextFile:
             with self.path.open("rb") as file:
                 file.seek(self._skip)
                 self.bytes_read = self._skip
-                while data := file.read(size):
+                while data := file.read(self._wanted(size)):
                     self.bytes_read += len(data)
                     if decoder is not None:
                         data = decoder.decode(data).encode()
@@ -67,6 +70,9 @@ class TextFile:
             raise unreadable(self.path, error) from None
         if rest:
             yield rest.replace(b"\r", b"")
+
+    def _wanted(self, size: int) -> int:
+        return size if self._end is None else min(size, self._end - self.bytes_read)
 
     def head_lines(self) -> list[str]:
         """The first whole lines, for people: UTF-8, or Latin-1 where it is none."""

@@ -19,7 +19,10 @@ from acquisition.errors import RecordingDamaged
 from acquisition.recordings.csv_layout import TimeKind, find_layout, number, split
 from acquisition.recordings.csv_lines import TextFile
 from acquisition.recordings.csv_numbers import parse
-from acquisition.recordings.csv_times import (
+from acquisition.recordings.placing import Placer
+from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
+from acquisition.recordings.recording import RecordingOptions
+from acquisition.recordings.timing import (
     Timing,
     clocks,
     find_timing,
@@ -28,9 +31,6 @@ from acquisition.recordings.csv_times import (
     refined,
     stamps,
 )
-from acquisition.recordings.placing import Placer
-from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
-from acquisition.recordings.recording import RecordingOptions
 from acquisition.stream import ChannelHint, StreamInfo, clean
 
 Floats = npt.NDArray[np.float64]
@@ -84,33 +84,31 @@ class CsvRecording:
         """Blocks in order. Raises RecordingDamaged where it stops being such a table."""
         placer = Placer()
         before: float | None = None
+        dropped = 0  # lines at the end of the pieces before
         for line, table, times, good in self._tables():
             at = np.flatnonzero(good)
             if len(at) == 0:
-                placer.miss(len(good))
+                dropped += len(good)
                 continue
             # Lines dropped before each good one; the time column may know of more.
-            lost = np.diff(at, prepend=-1) - 1
+            lost = np.diff(at, prepend=-1 - dropped) - 1
+            dropped = len(good) - 1 - int(at[-1])
+            other: tuple[int, float] | None = None
             if times is not None and self._timing is not None:
                 times = times[at]
+                other = other_step(self._timing, times)
+                if other is not None:
+                    at, times, lost = (
+                        at[: other[0] + 1],
+                        times[: other[0] + 1],
+                        lost[: other[0] + 1],
+                    )
                 told = missing(self._timing, times, before)
                 before = float(times[-1])
                 lost = np.where(told < 0, -1, np.maximum(lost, told))
-                if (other := other_step(self._timing, times)) is not None:
-                    raise damaged(
-                        f"{self._name}: beyond line {line + other[0]} times step by"
-                        f" {other[1]:g}, not by {self._timing.step:g} as before",
-                        "cut the file there and measure the parts one by one",
-                    )
-            cuts = np.flatnonzero(lost)
-            whole = len(at) == len(good)
-            for a, b in zip([0, *cuts.tolist()], [*cuts.tolist(), len(at)], strict=True):
-                if b > a:
-                    if lost[a]:
-                        placer.miss(int(lost[a]) if lost[a] > 0 else None)
-                    yield placer.place(table[:, a:b] if whole else table[:, at[a:b]])
-            if at[-1] + 1 < len(good):
-                placer.miss(len(good) - 1 - int(at[-1]))
+            yield from _between_gaps(placer, table, at, lost)
+            if other is not None:
+                raise self._steps_otherwise(line + int(at[-1]), other[1])
         if self._ragged_end:
             raise damaged(
                 f"{self._name} is cut short in line {self._ragged_end}",
@@ -333,6 +331,13 @@ class CsvRecording:
         value = number(cell, self._layout.decimal)
         return math.nan if value is None else value
 
+    def _steps_otherwise(self, line: int, step: float) -> RecordingDamaged:
+        usual = self._timing.step if self._timing is not None else math.nan
+        return damaged(
+            f"{self._name}: beyond line {line} times step by {step:g}, not by {usual:g} as before",
+            "cut the file there and measure the parts one by one",
+        )
+
     def _no_table_any_more(
         self, lines: list[bytes], wrong: Mask, number_: int, columns: int
     ) -> RecordingDamaged:
@@ -342,6 +347,19 @@ class CsvRecording:
             f" {clean(line)}",
             "what is before it was read; cut the file there",
         )
+
+
+def _between_gaps(
+    placer: Placer, table: Floats, at: npt.NDArray[np.int64], lost: npt.NDArray[np.int64]
+) -> Iterator[Block]:
+    """Blocks of the sets `at` of a table, with `lost` sets (-1: unknown) missing before each."""
+    cuts = np.flatnonzero(lost)
+    whole = len(at) == table.shape[1]
+    for a, b in zip([0, *cuts.tolist()], [*cuts.tolist(), len(at)], strict=True):
+        if b > a:
+            if lost[a]:
+                placer.miss(int(lost[a]) if lost[a] > 0 else None)
+            yield placer.place(table[:, a:b] if whole else table[:, at[a:b]])
 
 
 def _without_text(piece: bytes, separator: str, time_at: int) -> tuple[bytes, list[str]]:

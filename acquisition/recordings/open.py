@@ -2,7 +2,7 @@
 
 from pathlib import Path
 
-from acquisition.recordings.readable import beside, refused, shown, size_of
+from acquisition.recordings.readable import begins, beside, refused, shown, size_of
 from acquisition.recordings.recording import Recording, RecordingOptions
 
 CAPTURE_FORMATS = ("crestwire", "text", "raw")
@@ -103,14 +103,6 @@ def _by_name(path: Path, options: RecordingOptions, head: bytes, suffix: str) ->
             "check that it was copied whole, or give it its right name",
         )
     return None
-
-
-def begins(head: bytes) -> str:
-    """How a file begins, in words: readable text as such, else bytes in hex."""
-    text = head[:24].decode("latin-1")
-    if text.isascii() and all(c.isprintable() or c in "\r\n\t" for c in text):
-        return "the text " + repr(text.split("\n", maxsplit=1)[0].strip("\r"))
-    return "the bytes " + head[:8].hex(" ")
 
 
 def _only_sound_has_full_scale(options: RecordingOptions, name: str, head: bytes) -> None:

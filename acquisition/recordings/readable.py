@@ -49,7 +49,7 @@ def size_of(path: Path) -> int:
         with path.open("rb"):
             pass
     except (FileNotFoundError, NotADirectoryError):
-        raise _absent(path) from None
+        raise absent(path) from None
     except PermissionError:
         raise _noted(
             RecordingAbsent(f"{name} may not be read by this user"),
@@ -63,6 +63,14 @@ def size_of(path: Path) -> int:
     if status.st_size == 0:
         raise refused(f"{name} is empty", "check that the recording had finished and was copied")
     return status.st_size
+
+
+def begins(head: bytes) -> str:
+    """How a file begins, in words: readable text as such, else bytes in hex."""
+    text = head[:24].decode("latin-1")
+    if text.isascii() and all(c.isprintable() or c in "\r\n\t" for c in text):
+        return "the text " + repr(text.split("\n", maxsplit=1)[0].strip("\r"))
+    return "the bytes " + head[:8].hex(" ")
 
 
 def beside(path: Path, suffix: str) -> Path | None:
@@ -80,8 +88,9 @@ def unreadable(path: Path, error: OSError) -> RecordingError:
     return damaged(f"{shown(path)} cannot be read further: {reason}", "copy the file and try again")
 
 
-def _absent(path: Path) -> RecordingAbsent:
-    error = RecordingAbsent(f"there is no file {shown(path)}")
+def absent(path: Path, which: str = "") -> RecordingAbsent:
+    """There is no such file; `which` tells more of it. To be raised by the caller."""
+    error = RecordingAbsent(f"there is no file {shown(path)}{', ' * bool(which)}{which}")
     try:
         stem = path.stem.lower()
         near = sorted(p.name for p in path.parent.iterdir() if p.stem.lower() == stem)[:3]
