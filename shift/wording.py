@@ -91,8 +91,14 @@ def duration(seconds: float) -> str:
 
 def misleads_begins(channel: Channel, reading: Reading) -> str:
     """Sentence for the moment from which an averaging meter misleads."""
-    return f"{channel.name}: an averaging meter misleads from here. " + disagreement(
-        channel, reading
+    shown = quantity(reading.averaging, channel.unit, reading.u.get("averaging"))
+    true = quantity(reading.rms, channel.unit, reading.u.get("rms"))
+    error = reading.averaging_error
+    side = "low" if error < 0 else "high"
+    amount = percent(abs(error), reading.u.get("averaging_error"))
+    return (
+        f"{channel.name}: an averaging meter misleads from here: {shown} instead of {true}, "
+        f"{amount} {side}."
     )
 
 

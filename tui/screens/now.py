@@ -69,7 +69,7 @@ def _body(
     across = _columns(width) if len(tiles) > 1 else 1
     rows = math.ceil(len(tiles) / across)
     room = height - 2 - events
-    tall = max(LEAST_TILE, min(16, room // rows))
+    tall = max(LEAST_TILE, room // rows)
     each = (width - 2 * (across - 1)) // across
     lines: list[Line] = []
     for r in range(rows):
@@ -103,13 +103,15 @@ def _tile(channel: ChannelView, view: View, width: int, height: int) -> list[Lin
     )
     tall = 5 if height >= COMFORTABLE_TILE and width >= 76 else 3
     digit_width = 45 if tall == 5 else 32
-    large = digits.large(number.rjust(7), tall, view.ascii_only)
-    left: list[Line] = [[("  " + row, "big")] for row in large]
+    large = digits.large(number, tall, view.ascii_only)
+    # Right against the unit, whatever its digits and point take.
+    before = " " * max(2, digit_width - 4 - digits.width_of(number, tall))
+    left: list[Line] = [[(before + row, "big")] for row in large]
     left[-1] = [*left[-1], (f" {shown_unit}", "title")]
     meter, meter_unit = view.steady.figure(
         f"{name}.averaging", reading.averaging, reading.u.get("averaging", 0.0), unit
     )
-    coarse = max(reading.u.get("peak", 0.0), 2e-4 * reading.peak)
+    coarse = max(reading.u.get("peak", 0.0), 1e-3 * reading.peak)
     figures = (
         f"crest factor {plainly(reading.crest_factor, 3)}  "
         f"THD-F {plainly(100.0 * reading.thd_f, 1)} %  "
@@ -136,7 +138,7 @@ def _tile(channel: ChannelView, view: View, width: int, height: int) -> list[Lin
     room = height - 1 - len(block)
     lines += block
     if room >= 1:
-        lines += _trend(channel, view, width, min(room, 6))
+        lines += _trend(channel, view, width, min(room, 14))
     return [fit(line, width) for line in lines[:height]] + [[] for _ in range(height - len(lines))]
 
 

@@ -114,7 +114,8 @@ def _trace(
             line.append((f" {labels[y][0]}", labels[y][1]))
         lines.append(line)
     span = 1000.0 * length / window.rate
-    axis = "0 ms".ljust(max(4, plot_width - 9)) + f"{span:.1f} ms"
+    last = f"{span:.1f} ms"
+    axis = "0 ms".ljust(max(4, plot_width - len(last))) + last
     lines.append([(" " * AXIS + axis, "dim")])
     return lines
 
@@ -156,7 +157,7 @@ def _levels(
 
 def _scale(low: float, high: float, rows: int, unit: str) -> dict[int, str]:
     scale: dict[int, str] = {}
-    for value in ticks(low, high, max(2, rows // 3)):
+    for value in ticks(low, high, max(2, rows // 2)):
         row = row_of(value, low, high, rows)
         if row is not None:
             scale[row] = f"{value:g}" + (f" {unit}" if value == 0.0 else "")
