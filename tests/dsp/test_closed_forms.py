@@ -60,7 +60,9 @@ def test_levels(readings_of, name):
     readings = readings_of(np.stack((np.sin(phase), 3.0 * wave(phase))), RATE)[0]
     assert readings.rms[1:, 1] == pytest.approx(3.0 * rms, rel=tolerance)
     assert readings.arv[1:, 1] == pytest.approx(3.0 * arv, rel=2 * tolerance)
-    assert readings.crest_factor[1:, 1] == pytest.approx(crest, rel=max(2 * tolerance, 2e-4))
+    # A pointed top is missed by up to half a sample: 4 * 0.5 / 401 of it.
+    pointed = 0.005 if name == "triangle" else 2e-4
+    assert readings.crest_factor[1:, 1] == pytest.approx(crest, rel=max(2 * tolerance, pointed))
     assert readings.form_factor[1:, 1] == pytest.approx(rms / arv, rel=3 * tolerance)
     if error is not None:
         assert readings.averaging_error[1:, 1] == pytest.approx(error, abs=3 * tolerance)
