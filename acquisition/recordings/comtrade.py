@@ -19,7 +19,6 @@ from acquisition.recordings.comtrade_ascii import read_ascii
 from acquisition.recordings.comtrade_cfg import Analog, Description, read_description
 from acquisition.recordings.placing import SETS_AT_A_TIME, Placer, unique
 from acquisition.recordings.readable import (
-    absent,
     beside,
     damaged,
     refused,
@@ -38,6 +37,7 @@ _BINARY: dict[str, tuple[str, int | None]] = {
     "BINARY32": ("<i4", -(2**31)),
     "FLOAT32": ("<f4", None),  # NaN or infinite
 }
+_BOTH = "a COMTRADE recording is two files: copy both, under one name"
 LARGEST_CFG = 16 << 20  # bytes; 9999 channels take about 1 MB
 _SECTION = re.compile(rb"^-+\s*file type:\s*([A-Za-z]+)\s*([A-Za-z0-9]*)\s*:?\s*(\d*)\s*-+\s*$")
 
@@ -59,11 +59,18 @@ class ComtradeRecording:
         """Read the description, find the data, compare the two.
 
         Args:
-            path: of the .cfg or .cff.
+            path: of the .cfg, the .dat beside one, or the .cff.
         Raises:
             RecordingAbsent, RecordingRefused: a part is missing or not to be read, or they do not
                 fit each other.
         """
+        notes: list[str] = []
+        if path.suffix.lower() == ".dat":
+            cfg = beside(path, ".cfg")
+            if cfg is None:
+                raise refused(f"{shown(path)} has no {path.stem}.cfg beside it", _BOTH)
+            notes.append(f"{path.name} is described by {cfg.name}, which was read too.")
+            path = cfg
         self.path = path
         self._name = shown(path)
         if path.suffix.lower() == ".cff":
@@ -72,13 +79,12 @@ class ComtradeRecording:
             self._said = read_description(_text(path), self._name)
             data = beside(path, ".dat")
             if data is None:
-                raise absent(path.with_suffix(".dat"), f"which {path.name} describes")
+                raise refused(f"{self._name} has no {path.stem}.dat beside it", _BOTH)
             self._data = data
             place = (0, size_of(data), 1)
         self._begin, self._end, self._first_line = place
         self.bytes_total = self._end - self._begin
         self._done = 0
-        notes: list[str] = []
         self._damage = ""
         self._promised = self._said.rates[-1][1]
         self.sets: int | None = self._count_sets(notes)

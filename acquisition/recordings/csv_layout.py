@@ -5,12 +5,24 @@ different numbers and nothing decides between them, the file is refused and both
 shown: a wrong guess would measure nonsense without a word.
 """
 
-import csv
 import re
 from dataclasses import dataclass, replace
 from enum import StrEnum
 from itertools import pairwise
 
+from acquisition.recordings.csv_reading import (
+    CLOCK,
+    DATE,
+    ENOUGH_TO_SEE_A_ZERO,
+    LINES_LOOKED_AT,
+    NO_NUMBER,
+    READINGS,
+    STAMP,
+    Fit,
+    fit_of,
+    number,
+    split,
+)
 from acquisition.recordings.placing import unique
 from acquisition.recordings.readable import refused
 from acquisition.stream import clean
@@ -40,6 +52,7 @@ class Layout:
     time_unit: float = 1.0  # s
     trailing: bool = False  # every line ends on a separator
     undecided: bool = False  # no number so far had a decimal mark
+    left_out: tuple[int, ...] = ()  # columns without a single number
     notes: tuple[str, ...] = ()
 
     @property
@@ -48,18 +61,6 @@ class Layout:
         return self.time_kind is TimeKind.CLOCK and self.time_at == 1
 
 
-# What instruments and spreadsheets write for a sample that they do not have.
-NO_NUMBER = re.compile(
-    r"(?i)[+-]?(?:|nan|-?nan|inf|infinity|o\.?l\.?|ovl|over|overload|overflow|n/?a|null|none|err"
-    r"|error|-+|\?+|\*+|#num!|#n/a|#value!|#div/0!)$"
-)
-_NUMBER = {
-    ".": re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?$"),
-    ",": re.compile(r"[+-]?(?:\d+(?:,\d+)?|,\d+)(?:[eE][+-]?\d+)?$"),
-}
-_STAMP = re.compile(r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(?::\d\d(?:[.,]\d+)?)?\s*(?:Z|[+-]\d\d:?\d\d)?$")
-_CLOCK = re.compile(r"\d{1,2}:\d\d:\d\d(?:[.,]\d+)?$")
-_DATE = re.compile(r"\d{4}[-/]\d\d[-/]\d\d$|\d{1,2}[./-]\d{1,2}[./-]\d{2,4}$")
 _TITLE = re.compile(r"^(.*?)\s*(?:\[([^\]]*)\]|\(([^)]*)\))$")
 _SLASHED = re.compile(r"^(.+?)\s*/\s*([mkMuµμn]?(?:V|A|s))$")
 _TIME = re.compile(
@@ -73,24 +74,6 @@ _SECONDS = {
 }  # fmt: skip
 
 # In this order: the first of readings that give the same numbers is taken.
-# Comma and decimal comma go together where the cells stand in quotes.
-_READINGS = [(mark, decimal) for mark in ("\t", ";", ",", " ") for decimal in (".", ",")]
-LINES_LOOKED_AT = 400
-MOST_PREAMBLE = 200  # lines
-MOST_COLUMNS = 1024
-# Of numbers with a decimal comma about one in ten has a 0 right after it.
-ENOUGH_TO_SEE_A_ZERO = 100  # lines: 0.9^100 = 3e-5
-
-
-@dataclass(frozen=True, slots=True)
-class _Fit:
-    separator: str
-    decimal: str
-    columns: int
-    start: int  # index of the first data line
-    rows: tuple[tuple[str, ...], ...]
-    trailing: bool
-    values: tuple[tuple[float | str, ...], ...]  # of the first rows, to compare readings
 
 
 def find_layout(lines: list[str], name: str) -> Layout:
@@ -102,10 +85,10 @@ def find_layout(lines: list[str], name: str) -> Layout:
     Raises:
         RecordingRefused: no table, or two readings that nothing decides between.
     """
-    fits: dict[object, _Fit] = {}
+    fits: dict[object, Fit] = {}
     undecided = False
-    for separator, decimal in _READINGS:
-        fit = _fit(lines, separator, decimal)
+    for separator, decimal in READINGS:
+        fit = fit_of(lines, separator, decimal)
         if fit is not None:
             key = (fit.start, fit.columns, fit.values)
             undecided |= key in fits and fits[key].separator == fit.separator
@@ -123,87 +106,7 @@ def find_layout(lines: list[str], name: str) -> Layout:
     return _described(lines, choices[0], undecided, notes, name)
 
 
-def split(line: str, separator: str) -> list[str]:
-    """The fields of a line, blanks around them taken off, quotes honoured."""
-    if '"' in line:
-        if separator == " ":
-            line = " ".join(line.split())
-        fields = next(csv.reader([line], delimiter=separator, skipinitialspace=True), [])
-        return [field.strip() for field in fields]
-    if separator == " ":
-        return line.split()
-    return [field.strip() for field in line.split(separator)]
-
-
-def number(cell: str, decimal: str) -> float | None:
-    """A cell as a number; None when it is none, or not finite."""
-    if _NUMBER[decimal].match(cell) is None:
-        return None
-    value = float(cell.replace(",", "."))
-    return value if abs(value) != float("inf") else None
-
-
-# -- readings ------------------------------------------------------------------------------------
-
-
-def _fit(lines: list[str], separator: str, decimal: str) -> _Fit | None:
-    """The reading with this separator and decimal mark, when most lines from some place on fit."""
-    looked: list[tuple[int, list[str]]] = []
-    counts: dict[int, int] = {}
-    for k, line in enumerate(lines[: MOST_PREAMBLE + LINES_LOOKED_AT]):
-        if line.strip():
-            fields = split(line, separator)
-            if not _is_data(fields, decimal):
-                fields = []
-            looked.append((k, fields))
-            counts[len(fields)] = counts.get(len(fields), 0) + bool(fields)
-    width = max(counts, key=lambda n: counts[n], default=0)
-    if not width or width > MOST_COLUMNS:
-        return None
-    at = next(
-        (
-            p
-            for p in range(len(looked))
-            if all(len(fields) == width for _, fields in looked[p : p + 3])
-        ),
-        None,
-    )
-    if at is None:
-        return None
-    rest = looked[at : at + LINES_LOOKED_AT]
-    rows = [tuple(fields) for _, fields in rest if len(fields) == width]
-    if 10 * len(rows) < 6 * len(rest):
-        return None
-    trailing = width > 1 and separator != " " and all(row[-1] == "" for row in rows)
-    if trailing:
-        width -= 1
-        rows = [row[:-1] for row in rows]
-    values = tuple(tuple(_worth(cell, decimal) for cell in row) for row in rows[:60])
-    return _Fit(separator, decimal, width, looked[at][0], tuple(rows), trailing, values)
-
-
-def _worth(cell: str, decimal: str) -> float | str:
-    value = number(cell, decimal)
-    return cell if value is None else value
-
-
-def _is_data(fields: list[str], decimal: str) -> bool:
-    """Whether a line holds samples: numbers, or words for a missing one; time may be text."""
-    begin = 0
-    if fields and (_STAMP.match(fields[0]) or _CLOCK.match(fields[0])):
-        begin = 1
-    elif len(fields) > 1 and _DATE.match(fields[0]) and _CLOCK.match(fields[1]):
-        begin = 2
-    any_number = False
-    for cell in fields[begin:]:
-        if _NUMBER[decimal].match(cell):
-            any_number = True
-        elif not NO_NUMBER.match(cell):
-            return False
-    return any_number or (begin > 0 and len(fields) > begin)
-
-
-def _by_zeros(lines: list[str], choices: list[_Fit], notes: list[str]) -> list[_Fit]:
+def _by_zeros(lines: list[str], choices: list[Fit], notes: list[str]) -> list[Fit]:
     """Two columns of whole numbers, or one of decimals with a comma: look for `3,05`."""
     parts = [fit for fit in choices if fit.separator == "," and fit.columns == 2]
     wholes = [fit for fit in choices if fit.decimal == "," and fit.columns == 1]
@@ -225,7 +128,7 @@ def _by_zeros(lines: list[str], choices: list[_Fit], notes: list[str]) -> list[_
 # -- header --------------------------------------------------------------------------------------
 
 
-def _header(lines: list[str], fit: _Fit) -> tuple[list[str] | None, list[str] | None, int]:
+def _header(lines: list[str], fit: Fit) -> tuple[list[str] | None, list[str] | None, int]:
     """Titles, a row of units below them, and how many lines came before them all."""
     before = [k for k in range(fit.start) if lines[k].strip()]
     if not before:
@@ -240,7 +143,31 @@ def _header(lines: list[str], fit: _Fit) -> tuple[list[str] | None, list[str] | 
     return cells, None, before[-1]
 
 
-def _titles(line: str, fit: _Fit) -> list[str] | None:
+def _refuse_other_header(lines: list[str], fit: Fit, name: str) -> None:
+    """Refuse a header that has another count of names than the lines below it have fields."""
+    above = next((k for k in range(fit.start - 1, -1, -1) if lines[k].strip()), None)
+    if above is None:
+        return
+    cells = split(lines[above].lstrip("\ufeff#% "), fit.separator)
+    if not 2 <= len(cells) < fit.columns or not any(
+        _TIME.match(title) or unit for title, unit in map(_name_and_unit, cells)
+    ):
+        return
+    where = f"line {fit.start + 1}, {clean(lines[fit.start], 30)}, is"
+    if fit.separator == "," and fit.columns == 2 * len(cells):
+        raise refused(
+            f"{name} can be read in two ways: {where} {fit.columns} columns, or {len(cells)} as in"
+            " the header, with a comma for the decimal mark",
+            "save it with semicolons between the columns, or with decimal points",
+        )
+    raise refused(
+        f"{name}: the header in line {above + 1} names {len(cells)} columns, but {where}"
+        f" {fit.columns}",
+        "give every column a name, and write decimals with a point",
+    )
+
+
+def _titles(line: str, fit: Fit) -> list[str] | None:
     line = line.lstrip("\ufeff").lstrip("#%").strip("\r\n ") if line.strip() else line
     cells = split(line, fit.separator)
     if fit.separator == " " and len(cells) != fit.columns:
@@ -254,10 +181,11 @@ def _titles(line: str, fit: _Fit) -> list[str] | None:
     return cells
 
 
-def _described(lines: list[str], fit: _Fit, undecided: bool, notes: list[str], name: str) -> Layout:
+def _described(lines: list[str], fit: Fit, undecided: bool, notes: list[str], name: str) -> Layout:
     titles, units_row, skipped = _header(lines, fit)
     if titles is None:
         skipped = fit.start
+        _refuse_other_header(lines, fit, name)
     preamble = [line for line in lines[:skipped] if line.strip()]
     if preamble:
         first = clean(preamble[0], 40)
@@ -284,17 +212,25 @@ def _described(lines: list[str], fit: _Fit, undecided: bool, notes: list[str], n
         undecided=undecided,
     )
     layout = _with_time(layout, fit, pairs, titles is not None, notes, name)
-    rest = [
-        pair
-        for column, pair in enumerate(pairs)
-        if column != layout.time_at and not (layout.dated and column == 0)
-    ]
+    rest, left_out = [], []
+    for column, pair in enumerate(pairs):
+        if column == layout.time_at or (layout.dated and column == 0):
+            continue
+        if all(NO_NUMBER.match(row[column]) for row in fit.rows):
+            left_out.append(column)
+            notes.append(
+                f"Column {column + 1}{' ' * bool(pair[0])}{clean(pair[0])} holds no numbers and"
+                " is left out."
+            )
+        else:
+            rest.append(pair)
     if not rest:
         raise refused(f"{name} has no column of samples beside its time", "export the samples too")
     return replace(
         layout,
         names=tuple(unique([clean(one) for one, _ in rest])),
         units=tuple(clean(unit, 12) for _, unit in rest),
+        left_out=tuple(left_out),
         notes=tuple(notes),
     )
 
@@ -309,18 +245,18 @@ def _name_and_unit(title: str) -> tuple[str, str]:
 
 def _with_time(
     layout: Layout,
-    fit: _Fit,
+    fit: Fit,
     pairs: list[tuple[str, str]],
     titled: bool,
     notes: list[str],
     name: str,
 ) -> Layout:
     cells = fit.rows[0]
-    if _STAMP.match(cells[0]):
+    if STAMP.match(cells[0]):
         return replace(layout, time_at=0, time_kind=TimeKind.STAMP)
-    if _CLOCK.match(cells[0]):
+    if CLOCK.match(cells[0]):
         return replace(layout, time_at=0, time_kind=TimeKind.CLOCK)
-    if len(cells) > 1 and _DATE.match(cells[0]) and _CLOCK.match(cells[1]):
+    if len(cells) > 1 and DATE.match(cells[0]) and CLOCK.match(cells[1]):
         return replace(layout, time_at=1, time_kind=TimeKind.CLOCK)
     if not titled:
         return _guessed_time(layout, fit, notes, name)
@@ -342,7 +278,7 @@ def _with_time(
     return layout
 
 
-def _guessed_time(layout: Layout, fit: _Fit, notes: list[str], name: str) -> Layout:
+def _guessed_time(layout: Layout, fit: Fit, notes: list[str], name: str) -> Layout:
     """Without a header: a first column that rises in even steps is time, or a sample number."""
     first = [row[0] for row in fit.values]
     values = [value for value in first if isinstance(value, float)]
@@ -368,7 +304,7 @@ def _guessed_time(layout: Layout, fit: _Fit, notes: list[str], name: str) -> Lay
 # -- refusals ------------------------------------------------------------------------------------
 
 
-def _two_ways(choices: list[_Fit], lines: list[str], name: str) -> Exception:
+def _two_ways(choices: list[Fit], lines: list[str], name: str) -> Exception:
     where = choices[0].start
     ways = " or ".join(
         f"{fit.columns} column{'s' if fit.columns > 1 else ''}"
@@ -397,7 +333,7 @@ def _no_table(lines: list[str], name: str) -> Exception:
             )
     k, line = text[min(1, len(text) - 1)]
     return refused(
-        f"{name} holds no table of numbers that can be made out;"
+        f"{name} holds no rows of numbers that can be made out;"
         f" line {k + 1} reads: {clean(line, 40)}",
         "a table has a header line such as time [s],U [V],I [A] and a line for each sample",
         "if it is what a logger sent, try --format text",

@@ -37,7 +37,7 @@ class TextFile:
         self._returns = wide_newline not in head
         self.head = head
 
-    def pieces(self, size: int = PIECE) -> Iterator[bytes]:
+    def pieces(self, size: int | None = None) -> Iterator[bytes]:
         """Whole lines, each with its newline; the last line as it is, newline or not.
 
         Raises:
@@ -49,7 +49,7 @@ class TextFile:
             with self.path.open("rb") as file:
                 file.seek(self._skip)
                 self.bytes_read = self._skip
-                while data := file.read(self._wanted(size)):
+                while data := file.read(self._wanted(size or PIECE)):
                     self.bytes_read += len(data)
                     if decoder is not None:
                         data = decoder.decode(data).encode()

@@ -16,9 +16,10 @@ import numpy.typing as npt
 
 from acquisition.block import Block
 from acquisition.errors import RecordingDamaged
-from acquisition.recordings.csv_layout import TimeKind, find_layout, number, split
+from acquisition.recordings.csv_layout import TimeKind, find_layout
 from acquisition.recordings.csv_lines import TextFile
 from acquisition.recordings.csv_numbers import parse
+from acquisition.recordings.csv_reading import number, split
 from acquisition.recordings.placing import Placer
 from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
 from acquisition.recordings.recording import RecordingOptions
@@ -220,21 +221,21 @@ class CsvRecording:
             unfinished = not piece.endswith(b"\n")
             if unfinished:
                 piece += b"\n"
-            table, texts, good, ragged = self._numbers(piece, first)
-            if unfinished and len(good) and ragged[-1]:
+            table, texts, good = self._numbers(piece, first)
+            if unfinished and len(good) and not good[-1]:
                 self._ragged_end = line
                 table, texts, good = table[:, :-1], texts[:-1], good[:-1]
             if not len(good):
                 continue
             times: Floats | None = None
+            out = self._left_out(len(table))
             if layout.time_kind in (TimeKind.STAMP, TimeKind.CLOCK):
                 times, before = self._text_times(texts, before)
                 good &= np.isfinite(times)
             elif layout.time_at is not None:
                 times = table[layout.time_at] * layout.time_unit
-                table = (
-                    table[1:] if layout.time_at == 0 else np.delete(table, layout.time_at, axis=0)
-                )
+                out = [*out, layout.time_at]
+            table = table[1:] if out == [0] else np.delete(table, out, axis=0) if out else table
             yield first, table, times, good
 
     def _text_times(self, texts: list[str], before: float | None) -> tuple[Floats, float | None]:
@@ -245,8 +246,8 @@ class CsvRecording:
         known = times[np.isfinite(times)]
         return times, float(known[-1]) if len(known) else before
 
-    def _numbers(self, piece: bytes, first: int) -> tuple[Floats, list[str], Mask, Mask]:
-        """Table (columns, n), time texts, lines that are usable, lines with a wrong field count."""
+    def _numbers(self, piece: bytes, first: int) -> tuple[Floats, list[str], Mask]:
+        """Table (columns, n), time texts, lines that are usable."""
         layout = self._layout
         columns = layout.columns
         texts: list[str] = []
@@ -263,21 +264,20 @@ class CsvRecording:
             piece = piece.replace(blank, blank[:1])
         found = parse(piece, ord(layout.separator), ord(layout.decimal), columns)
         good = ~found.odd
-        ragged = np.zeros(len(good), np.bool_)
         if found.odd.any():
             at = np.flatnonzero(found.odd)
             lines = [piece[found.starts[k] : found.ends[k]] for k in at.tolist()]
             keep = np.ones(len(good), np.bool_)
             rows, usable, wrong, nothing = self._slowly(lines, columns)
             found.table[:, at] = rows
-            good[at], ragged[at] = usable, wrong
+            good[at] = usable
             keep[at[nothing]] = False
             if np.count_nonzero(wrong) > max(MANY_RAGGED, len(good) // 2):
                 raise self._no_table_any_more(lines, wrong, first + int(at[wrong][0]), columns)
             if not keep.all():
                 texts = [text for text, kept in zip(texts, keep, strict=False) if kept]
-                return found.table[:, keep], texts, good[keep], ragged[keep]
-        return found.table, texts, good, ragged
+                return found.table[:, keep], texts, good[keep]
+        return found.table, texts, good
 
     def _slowly(self, lines: list[bytes], columns: int) -> tuple[Floats, Mask, Mask, Mask]:
         """Lines one by one: rows (columns, n), usable, wrong field count, nothing in it at all."""
@@ -301,7 +301,12 @@ class CsvRecording:
             if not wrong[k]:
                 rows[:, k] = [self._cell(cell) for cell in cells]
         self._in_bulk(lines, pending, rows)
+        rows[np.array(self._left_out(columns), np.intp)] = 0.0
         return rows, np.asarray(np.isfinite(rows).all(axis=0)), wrong, nothing
+
+    def _left_out(self, columns: int) -> list[int]:
+        """Columns without numbers, counted without the time's texts."""
+        return [column - (self._layout.columns - columns) for column in self._layout.left_out]
 
     def _in_bulk(self, lines: list[bytes], at: list[int], rows: Floats) -> None:
         """Lines with the right separators, by numpy: halved until only the bad ones are left."""

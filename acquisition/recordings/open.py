@@ -86,12 +86,10 @@ def _by_content(
 
 def _by_name(path: Path, options: RecordingOptions, head: bytes, suffix: str) -> Recording | None:
     name = shown(path)
-    if suffix in (".cfg", ".cff", ".dat"):
+    if suffix in (".cfg", ".cff") or (suffix == ".dat" and beside(path, ".cfg")):
         from acquisition.recordings.comtrade import ComtradeRecording
 
-        cfg = path if suffix != ".dat" else beside(path, ".cfg")
-        if cfg is not None:
-            return ComtradeRecording(cfg, options)
+        return ComtradeRecording(path, options)
     if suffix in _TABLE_NAMES:
         from acquisition.recordings.csv_table import CsvRecording
 

@@ -33,14 +33,16 @@ def size_of(path: Path) -> int:
     """Size of a file that is there, may be read and holds something. [bytes]
 
     Raises:
-        RecordingAbsent: missing, or not to be read by this user.
-        RecordingRefused: a directory, a pipe, an empty file.
+        RecordingAbsent: missing, a folder, or not to be read by this user.
+        RecordingRefused: a pipe, an empty file.
     """
     name = shown(path)
     try:
         status = path.stat()
         if stat.S_ISDIR(status.st_mode):
-            raise refused(f"{name} is a directory, not a recording", "name one file in it")
+            raise _noted(
+                RecordingAbsent(f"{name} is a folder, not a recording"), ("name a file in it",)
+            )
         if not stat.S_ISREG(status.st_mode):
             raise refused(
                 f"{name} is no ordinary file, so it cannot be measured as a recording",
@@ -49,7 +51,7 @@ def size_of(path: Path) -> int:
         with path.open("rb"):
             pass
     except (FileNotFoundError, NotADirectoryError):
-        raise absent(path) from None
+        raise _absent(path) from None
     except PermissionError:
         raise _noted(
             RecordingAbsent(f"{name} may not be read by this user"),
@@ -88,9 +90,8 @@ def unreadable(path: Path, error: OSError) -> RecordingError:
     return damaged(f"{shown(path)} cannot be read further: {reason}", "copy the file and try again")
 
 
-def absent(path: Path, which: str = "") -> RecordingAbsent:
-    """There is no such file; `which` tells more of it. To be raised by the caller."""
-    error = RecordingAbsent(f"there is no file {shown(path)}{', ' * bool(which)}{which}")
+def _absent(path: Path) -> RecordingAbsent:
+    error = RecordingAbsent(f"there is no file {shown(path)}")
     try:
         stem = path.stem.lower()
         near = sorted(p.name for p in path.parent.iterdir() if p.stem.lower() == stem)[:3]
