@@ -16,7 +16,7 @@ from cobs import cobs
 
 from acquisition.accounting import Tally
 from acquisition.block import Block, BlockFlag
-from acquisition.stream import ChannelHint, StreamInfo, clean
+from acquisition.stream import StreamInfo, clean
 from acquisition.wire.crestwire_frame import (
     BY_CODE,
     CHANNEL_LIMIT,
@@ -35,6 +35,7 @@ from acquisition.wire.crestwire_frame import (
     tagged,
     unpack_samples,
 )
+from acquisition.wire.crestwire_info import hello_rate, stream_info
 from acquisition.wire.ledger import Ledger
 
 DATA_HEAD = VERSION << 4 | Kind.DATA
@@ -327,8 +328,8 @@ class CrestwireDecoder:
             hello = parse_hello(payload, min(channels, CHANNEL_LIMIT))
             if self._shape is not None and channels != self._shape[0]:
                 return  # of some other stream's shape: _fits tells when DATA follows
-            rate = _rate(hello)
-            before = _rate(self.hello) if self.hello is not None else rate
+            rate = hello_rate(hello)
+            before = hello_rate(self.hello) if self.hello is not None else rate
             self.hello = hello
             self._ledger.declare(rate, hello.tick_hz)
             if rate != before:
@@ -364,35 +365,7 @@ class CrestwireDecoder:
         """Make `info` from the frames' shape and the latest HELLO."""
         assert self._shape is not None
         channels, kind = self._shape
-        hello = self.hello or Hello()
-        bits = hello.bits if hello.bits and hello.bits <= 32 else None
-        hints = []
-        for c in range(channels):
-            said = hello.channels[c] if c < len(hello.channels) else None
-            rails = said.rails if said is not None and said.rails else _rails(kind, bits)
-            hints.append(
-                ChannelHint(
-                    name=(said.name if said is not None else "") or f"ch{c + 1}",
-                    unit=said.unit if said is not None and said.gain is not None else "",
-                    gain=said.gain if said is not None else None,
-                    offset_codes=said.offset if said is not None else 0.0,
-                    rails=(float(rails[0]), float(rails[1])) if rails else None,
-                    skew_s=(said.skew_ns or 0) * 1e-9 if said is not None else 0.0,
-                    step=None if kind.name == "f32" else 1.0,
-                )
-            )
-        self.info = StreamInfo(
-            format="crestwire",
-            channels=tuple(hints),
-            rate=_rate(hello),
-            rate_tolerance_ppm=hello.tolerance_ppm,
-            sample_type=kind.name,
-            byte_order="little",
-            bits=bits,
-            unit_id=hello.unit_id,
-            firmware=hello.firmware,
-            notes=self._notes,
-        )
+        self.info = stream_info(channels, kind, self.hello or Hello(), self._notes)
 
     def _remark(self, sentence: str) -> None:
         if sentence not in self._notes:
@@ -422,19 +395,6 @@ def _body(unit: bytes) -> bytes:
     if len(body) < OVERHEAD or len(unit) > UNIT_LIMIT or zlib.crc32(body) != RESIDUE:
         return b""
     return body
-
-
-def _rate(hello: Hello) -> float | None:
-    return hello.rate_mhz / 1000.0 if hello.rate_mhz else None
-
-
-def _rails(kind: SampleType, bits: int | None) -> tuple[int, int] | None:
-    """Lowest and highest code of a converter of so many bits."""
-    if bits is None or kind.name == "f32":
-        return None
-    if kind.signed:
-        return (-(1 << (bits - 1)), (1 << (bits - 1)) - 1)
-    return (0, (1 << bits) - 1)
 
 
 def _shape_words(channels: int, kind: SampleType) -> str:

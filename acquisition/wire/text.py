@@ -66,7 +66,7 @@ class TextDecoder:
         """Decode the lines that are whole by now."""
         text = self._tail + data
         # A carriage return ends a line at once; the newline after it is then an empty line.
-        text = text.replace(b"\r", b"\n")
+        text = text.replace(b"\r\n", b"\n").replace(b"\r", b"\n")
         cut = text.rfind(b"\n") + 1
         whole, self._tail = text[:cut], text[cut:]
         blocks: list[Block] = []
@@ -106,8 +106,9 @@ class TextDecoder:
             self._overlong = False
             self._first_line = False
             whole = whole[end:]
-        if b"\n\n" in whole or whole[:1] == b"\n":
-            whole = re.sub(rb"\n+", b"\n", whole).lstrip(b"\n")
+        while b"\n\n" in whole:  # a few plain passes; a pattern takes longer than all the rest
+            whole = whole.replace(b"\n\n", b"\n")
+        whole = whole.lstrip(b"\n")
         if self._first_line and whole:
             end = whole.index(b"\n")
             self._first_line = False

@@ -399,15 +399,16 @@ def test_unplug_and_replug_keeps_the_account_and_leaks_nothing(tmp_path):
         )
         reader.start()
         sent = 0
-        for _ in range(12):
-            wait_until(lambda: end.heard)
-            got = reader.status.bytes_received
+        for k in range(12):
+            # Opening empties the input, so nothing is sent before the reader says that it reads.
+            wait_until(lambda k=k: reader.status.tally.reconnects == k and end.heard)
+            received = reader.status.bytes_received
             end.write(b"".join(pieces[sent : sent + 3]) + pieces[sent + 3][:20])
-            wait_until(lambda g=got: reader.status.bytes_received > g)
+            wait_until(lambda g=received: reader.status.bytes_received > g)
             sent += 5
             end.unplug()
             end.replug()
-        wait_until(lambda: end.heard)
+        wait_until(lambda: reader.status.tally.reconnects == 12)
         end.write(pieces[sent])
         wait_until(
             lambda: (
