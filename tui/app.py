@@ -12,6 +12,7 @@ from textual.binding import Binding, BindingType
 
 from shift.snapshot import Snapshot
 from tui.lines import Line
+from tui.lines import ascii_only as lines_in_ascii
 from tui.palette import palette
 from tui.screens import now, papers, wave
 from tui.screens.page import View
@@ -94,6 +95,10 @@ class CrestwatchApp(App[None]):
             self._canvas.redraw()
 
     def _draw(self, width: int, height: int) -> list[Line]:
+        lines = self._draw_page(width, height)
+        return lines_in_ascii(lines) if self.view.ascii_only else lines
+
+    def _draw_page(self, width: int, height: int) -> list[Line]:
         ascii_only = self.view.ascii_only
         if self._paper == "cautions":
             return papers.cautions(self._cautions[0], self._cautions[1:], width, height, ascii_only)

@@ -74,6 +74,24 @@ def rule(title: Iterable[Span], right: Iterable[Span], width: int, ascii_only: b
     return fit([(dash * 2 + " ", "rule"), *title, middle, *right, (f" {dash}", "rule")], width)
 
 
+def ascii_only(lines: Iterable[Line]) -> list[Line]:
+    """The lines for a terminal that knows nothing beyond ASCII, every cell in its place."""
+    return [
+        [
+            (text if text.isascii() else "".join(map(_ascii, text)), meaning)
+            for text, meaning in line
+        ]
+        for line in lines
+    ]
+
+
 def plain(lines: Iterable[Line]) -> str:
     """The text alone, for a test or a pipe."""
     return "\n".join("".join(text for text, _ in line).rstrip() for line in lines)
+
+
+_ASCII = {"±": "~", "°": "'", "µ": "u", "…": ".", "Ω": "o"}
+
+
+def _ascii(c: str) -> str:
+    return c if c.isascii() else _ASCII.get(c, "?") * cell_len(c)

@@ -42,8 +42,11 @@ def head(snapshot: Snapshot, view: View, width: int) -> Line:
     lost = "loss unknown" if tally.lost is None else f"{tally.lost} lost"
     running = wording.duration(snapshot.seconds) if snapshot.seconds else ""
     right = "  ".join(part for part in (frequency, lost, running) if part)
-    stage = snapshot.stage.value if snapshot.stage is not Stage.MEASURING else "measuring"
-    meaning = "misleads" if snapshot.stage in (Stage.WAITING, Stage.FAILED) else "agrees"
+    stage, meaning = snapshot.stage.value, "agrees"
+    if snapshot.stage in (Stage.WAITING, Stage.FAILED):
+        meaning = "misleads"
+    if view.frozen is not None:
+        stage, meaning = "FROZEN", "here"
     left: Line = [
         (" crestwatch ", "title"),
         (f" {snapshot.source} ", "text"),

@@ -35,8 +35,7 @@ def draw(snapshot: Snapshot, view: View, width: int, height: int) -> list[Line]:
         body = _body(snapshot, view, measured, width, height - 2)
     lines += [fit(line, width) for line in body[: max(0, height - 2)]]
     lines += [fit([], width) for _ in range(height - 1 - len(lines))]
-    remark = "FROZEN: space goes on" if view.frozen is not None else snapshot.setup_name
-    lines.append(foot(KEYS, width, remark))
+    lines.append(foot(KEYS, width, snapshot.setup_name))
     return lines[:height]
 
 
