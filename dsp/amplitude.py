@@ -33,15 +33,19 @@ class Amplitudes:
     peak_min: Floats  # (w,)
     jump_square: Floats  # (w,) what unseen edge positions leave open in mean_square
     jump_arv: Floats  # (w,) the same in arv_ac
+    jump_share: Floats  # (w,) how far it is shared by all edges alike: 1 wholly; 0 without jumps
 
 
-def measure_amplitudes(x: Floats, begins: Floats, ends: Floats, parts: int) -> Amplitudes:
+def measure_amplitudes(
+    x: Floats, begins: Floats, ends: Floats, parts: int, cyclic: bool = True
+) -> Amplitudes:
     """Sum one channel.
 
     Args:
         x: samples (n,), with MARGIN samples before the first and after the last end.
         begins, ends: (w,) positions in samples from the start of `x`; windows touch.
         parts: equal parts to divide each window into.
+        cyclic: whether the parts are cycles, in which an edge comes back at the same place.
     """
     w = len(begins)
     cuts = begins[:, None] + (ends - begins)[:, None] * (np.arange(parts) / parts)
@@ -60,7 +64,8 @@ def measure_amplitudes(x: Floats, begins: Floats, ends: Floats, parts: int) -> A
     cut = x[: high[-1]]
     peak_max = np.maximum.reduceat(cut, low)
     peak_min = np.minimum.reduceat(cut, low)
-    jump_square, jump_arv = _jumps(x, begins, ends, mean, peak_max - peak_min)
+    share = _shared((ends - begins) / parts, parts) if cyclic else np.ones(w)
+    jump_square, jump_arv, seen = _jumps(x, begins, ends, mean, peak_max - peak_min)
     return Amplitudes(
         mean_square=mean_square,
         mean=mean,
@@ -68,8 +73,9 @@ def measure_amplitudes(x: Floats, begins: Floats, ends: Floats, parts: int) -> A
         arv_ac=arv_ac,
         peak_max=peak_max,
         peak_min=peak_min,
-        jump_square=jump_square,
-        jump_arv=jump_arv,
+        jump_square=jump_square * share,
+        jump_arv=jump_arv * share,
+        jump_share=share * seen,
     )
 
 
@@ -123,14 +129,32 @@ def _kinks(z: Floats, size: Floats, at: Ends, count: int) -> Floats:
     return result
 
 
+def _shared(cycle: Floats, count: int) -> Floats:
+    """How much of an edge's unknown place is left in the mean over `count` cycles, 0..1.
+
+    An edge that returns every `cycle` (w,) samples stands at p, p + cycle, ... between samples,
+    with p unknown and everywhere alike. Where sampling keeps step with the wave every one errs
+    alike and the mean as much as one; else they slide over the samples and even out. The error is
+    a sawtooth of the place; its harmonic m has the share 6 / (pi m)^2 of the variance and is
+    averaged to sin(pi m cycle count) / (count sin(pi m cycle)) of itself (closed form).
+    """
+    m = np.arange(1, 25)
+    share = 6.0 / (np.pi * m) ** 2
+    half_turns = np.pi * m * (cycle % 1.0)[:, None]
+    below = np.sin(half_turns) * count
+    level = np.abs(below) > 1e-9
+    kept = np.where(level, np.sin(half_turns * count) / np.where(level, below, 1.0), 1.0)
+    return np.asarray(np.sqrt((share * kept**2).sum(1) + (1.0 - share.sum())))
+
+
 def _jumps(
     x: Floats, begins: Floats, ends: Floats, mean: Floats, span: Floats
-) -> tuple[Floats, Floats]:
+) -> tuple[Floats, Floats, Floats]:
     """What the unknown place of a jump between two samples leaves open, per window.
 
     A jump from a to b lies anywhere between its samples (rectangular, 1 sample wide), so it
-    leaves |b^2 - a^2| / sqrt(12) samples of square open. Sampling that keeps step with the wave
-    repeats the same error at every edge, so edges add up and do not average out.
+    leaves |b^2 - a^2| / sqrt(12) samples of square open; were all edges placed alike between
+    samples, they would add up. Also whether there are jumps, 0 or 1.
     """
     w = len(begins)
     zero = np.zeros(w)
@@ -138,7 +162,7 @@ def _jumps(
     n = np.flatnonzero(step > JUMP_SHARE * float(span.max(initial=0.0)))
     n = n[(n >= 1) & (n + 1 < len(step))]
     if not len(n) or not span.max(initial=0.0) > 0.0:
-        return zero, zero
+        return zero, zero, zero
     n = n[step[n] > JUMP_RATIO * np.maximum(step[n - 1], step[n + 1])]
     part = np.searchsorted(begins, n, side="right") - 1
     kept = (part >= 0) & (n < ends[-1])
@@ -148,4 +172,4 @@ def _jumps(
     square = np.bincount(part, np.abs(b * b - a * a), w) / width
     shift = mean[part]
     arv = np.bincount(part, np.abs(np.abs(b - shift) - np.abs(a - shift)), w) / width
-    return square, arv
+    return square, arv, (np.bincount(part, minlength=w) > 0).astype(np.float64)

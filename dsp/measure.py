@@ -63,20 +63,23 @@ def measure(
     columns: dict[str, Floats] = {name: np.empty((count, c)) for name in _COLUMNS}
     u: dict[str, Floats] = {name: np.empty((count, c)) for name in _UNCERTAIN}
     flags = np.repeat(windows.flags[:, None], c, axis=1)
+    jumps = np.zeros((count, c))
     end_error = np.nan_to_num(windows.u_frequency / windows.frequency, nan=0.0)
     for k, channel in enumerate(channels):
-        found = measure_amplitudes(samples[k], begins, ends, parts)
+        found = measure_amplitudes(samples[k], begins, ends, parts, cycles > 0)
         figures, uncertain = _figures(found, lines[:, k], channel, end_error, ends - begins)
         for name, column in figures.items():
             columns[name][:, k] = column
         for name, column in uncertain.items():
             u[name][:, k] = column
+        jumps[:, k] = found.jump_share
         clipped = _clipped(samples[k], begins, ends, channel, found)
         flags[:, k] |= np.where(clipped, int(Flag.CLIPPED), 0)
         flags[:, k] |= np.where(_low(figures["rms"], channel), int(Flag.LOW_SIGNAL), 0)
-    columns["firing_angle"], u["firing_angle"] = firing_angle(
-        columns["averaging_error"], u["averaging_error"], lines
-    )
+    nu = windows.frequency / windows.rate
+    # A jump lies anywhere between its two samples (rectangular).
+    between = 2.0 * np.pi / np.sqrt(12.0) * np.nan_to_num(nu)[:, None] * jumps
+    columns["firing_angle"], u["firing_angle"] = firing_angle(lines, nu, between)
     u["frequency"] = np.repeat(windows.u_frequency[:, None], c, axis=1)
     return Readings(
         start=time0[1] + (windows.begins - time0[0]) / windows.rate,
@@ -129,11 +132,13 @@ def _figures(
 
     sigma = channel.step / np.sqrt(12.0)  # of one sample: quantisation, rectangular
     per_window = sigma / np.sqrt(width)
+    per_part = per_window * np.sqrt(found.mean_square.shape[1])
     u_square = np.sqrt(
         _scatter(found.mean_square) ** 2
         + (end_error * square) ** 2
         + found.jump_square**2
         + (2.0 * rms * per_window) ** 2
+        + _repeated(found.mean_square, 2.0 * rms * per_part) ** 2
         + sigma**4
     )
     u_rms_own = np.where(live, u_square / (2.0 * safe), sigma)
@@ -143,7 +148,11 @@ def _figures(
         + np.where(live, found.mean / safe, 1.0) ** 2 * channel.u_offset**2
     )
     u_arv_own = np.sqrt(
-        _scatter(found.arv_ac) ** 2 + (end_error * arv) ** 2 + found.jump_arv**2 + per_window**2
+        _scatter(found.arv_ac) ** 2
+        + (end_error * arv) ** 2
+        + found.jump_arv**2
+        + per_window**2
+        + _repeated(found.arv_ac, per_part) ** 2
     )
     u_arv = np.sqrt(u_arv_own**2 + (channel.u_gain * arv) ** 2 + channel.u_offset**2)
     # Scatter of the ratio itself: cycles that grow together leave it alone.
@@ -161,6 +170,7 @@ def _figures(
         + jump**2
         + (end_error * 0.5) ** 2
         + (per_window / safe) ** 2 * 2.0
+        + _repeated(ratio, per_part / safe) ** 2
         + (sigma / safe) ** 4
         + (found.mean / safe**2) ** 2 * channel.u_offset**2
     )
@@ -228,6 +238,19 @@ def _scatter(parts: Floats) -> Floats:
     lag = (rest[:, 1:] * rest[:, :-1]).sum(1) / np.maximum((rest**2).sum(1), 1e-300)
     lag = np.clip(lag, 0.0, 0.9)
     return np.asarray(np.sqrt(variance / n * (1.0 + lag) / (1.0 - lag)))
+
+
+def _repeated(parts: Floats, expected: Floats) -> Floats:
+    """What rounding errors that come back in every part leave in the mean of parts (w, p).
+
+    Rounding should scatter the parts by `expected` (w,). Where they scatter by far less, sampling
+    keeps step with a quiet wave: each part repeats the errors of the first and their mean is no
+    better than one; and a mirrored half-cycle repeats them once more, which leaves half as many.
+    Twice the variance found is held against it, as few parts tell it poorly.
+    """
+    if parts.shape[1] < 2:
+        return np.zeros(len(parts))
+    return np.asarray(np.sqrt(2.0 * np.maximum(expected**2 - 2.0 * parts.var(1, ddof=1), 0.0)))
 
 
 def _clipped(
