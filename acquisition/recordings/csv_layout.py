@@ -98,7 +98,10 @@ def find_layout(lines: list[str], name: str) -> Layout:
     choices = list(fits.values())
     notes: list[str] = []
     if len(choices) > 1:
-        choices = [fit for fit in choices if _header(lines, fit)[0] is not None] or choices
+        titled = [fit for fit in choices if _header(lines, fit)[0] is not None]
+        # One title with commas in it is rather several titles.
+        most = max((fit.columns for fit in titled), default=0)
+        choices = [fit for fit in titled if fit.columns == most] or choices
     if len(choices) > 1:
         choices = _by_zeros(lines, choices, notes)
     if len(choices) > 1:

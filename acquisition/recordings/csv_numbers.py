@@ -141,7 +141,7 @@ def _column(
             left = left[~here]
         if len(hit):
             _value(low, high, decimals, out, odd, hit)
-        if not len(left) or decimals > int(length[left].max()):
+        if not len(left) or (decimals != guess and decimals > int(length[left].max())):
             break
     if left is not None and len(left):
         _value(low, high, None, out, odd, left)

@@ -69,7 +69,7 @@ def fit_of(lines: list[str], separator: str, decimal: str) -> Fit | None:
     for k, line in enumerate(lines[: MOST_PREAMBLE + LINES_LOOKED_AT]):
         if line.strip():
             fields = split(line, separator)
-            if not _is_data(fields, decimal):
+            if not _is_data(fields, decimal) or (separator == " " and "\t" in line):
                 fields = []
             looked.append((k, fields))
             counts[len(fields)] = counts.get(len(fields), 0) + bool(fields)

@@ -24,6 +24,7 @@ from acquisition.recordings.placing import Placer
 from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
 from acquisition.recordings.recording import RecordingOptions
 from acquisition.recordings.timing import (
+    FIRST_STEPS,
     Timing,
     clocks,
     find_timing,
@@ -37,6 +38,7 @@ from acquisition.stream import ChannelHint, StreamInfo, clean
 Floats = npt.NDArray[np.float64]
 Mask = npt.NDArray[np.bool_]
 
+PIECES_LOOKED_AT = 256  # for times, when most lines have none
 MANY_RAGGED = 200  # lines without the right count of fields, more than half of a piece: no table
 
 
@@ -131,8 +133,7 @@ class CsvRecording:
         if layout.time_kind is TimeKind.NUMBER:
             self._timing = Timing(1.0)
         elif layout.time_at is not None:
-            _, _, times, good = next(self._tables(), (0, None, None, np.empty(0, np.bool_)))
-            known = times[good] if times is not None else np.empty(0)
+            known = self._first_times()
             timing = find_timing(known) if len(known) > 1 else None
             if timing is not None and not timing.exact:
                 timing = self._refined(timing, float(known[0]))
@@ -142,7 +143,7 @@ class CsvRecording:
                 if timing.note:
                     notes.append(timing.note)
         if options.rate is not None:
-            if own is not None and abs(own / options.rate - 1.0) > 1e-3:
+            if own is not None and abs(own / options.rate - 1.0) > 1e-6:
                 notes.append(f"--rate {options.rate:.10g} is used; the times say {own:.6g} Hz.")
             return options.rate
         if own is not None:
@@ -153,6 +154,16 @@ class CsvRecording:
             else "has times from which no rate can be told"
         )
         raise refused(f"{self._name} {what}", "tell the rate, for example: --rate 8000")
+
+    def _first_times(self) -> Floats:
+        """Times of the first lines, of sets with bad cells too."""
+        known = np.empty(0)
+        for looked, (_, _, times, _) in enumerate(self._tables()):
+            if times is not None:
+                known = np.concatenate((known, times[np.isfinite(times)]))
+            if len(known) > FIRST_STEPS or looked > PIECES_LOOKED_AT:
+                break
+        return known
 
     def _refined(self, timing: Timing, first: float) -> Timing:
         """The rate from the whole file, where the first lines tell it only roughly."""

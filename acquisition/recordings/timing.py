@@ -55,8 +55,8 @@ def find_timing(times: Floats) -> Timing | None:
     if not len(steps) or not (steps > 0.0).any():
         return None
     begin = steps[:FIRST_STEPS]
-    usual = float(np.median(begin))
-    if usual > 0.0 and np.count_nonzero(_about(begin, usual)) >= 0.9 * len(begin):
+    usual = float(np.partition(begin, (len(begin) - 1) // 2)[(len(begin) - 1) // 2])
+    if usual > 0.0 and _steady(begin, usual):
         even = steps[_about(steps, usual)]
         span = float(even.sum())
         step = span / len(even)
@@ -66,6 +66,16 @@ def find_timing(times: Floats) -> Timing | None:
         scatter = off if off > grain + 1e-9 * step else 0.0
         return Timing(step, 0.0, scatter, span, _uneven(times, step))
     return _coarse(times, steps)
+
+
+def _steady(steps: Floats, usual: float) -> bool:
+    """Whether most steps are the usual one, and the others gaps of whole steps."""
+    ratio = steps / usual
+    near = _about(steps, usual) | ((ratio > 1.0) & (np.abs(ratio - np.rint(ratio)) < 0.25))
+    return bool(
+        np.count_nonzero(near) >= 0.9 * len(steps)
+        and np.count_nonzero(_about(steps, usual)) >= 0.5 * len(steps)
+    )
 
 
 def _about(steps: Floats, usual: float) -> npt.NDArray[np.bool_]:
