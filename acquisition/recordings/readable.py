@@ -77,11 +77,14 @@ def begins(head: bytes) -> str:
 
 def beside(path: Path, suffix: str) -> Path | None:
     """The file of the same name with another suffix, in small or capital letters; None: none."""
-    for spelled in (suffix, suffix.upper(), suffix.capitalize()):
-        candidate = path.with_suffix(spelled)
-        if candidate.is_file():
-            return candidate
-    return None
+    exact = path.with_suffix(suffix)
+    if exact.is_file():
+        return exact
+    try:
+        near = [p for p in path.parent.iterdir() if p.suffix.lower() == suffix]
+    except OSError:
+        return None
+    return next((p for p in near if p.stem.lower() == path.stem.lower() and p.is_file()), None)
 
 
 def unreadable(path: Path, error: OSError) -> RecordingError:

@@ -46,12 +46,8 @@ class WavRecording:
         """
         self.path = path
         self.bytes_total = size_of(path)
-        self._file: BinaryIO = path.open("rb")
-        try:
-            head = _read_header(self._file, self.bytes_total, shown(path))
-        except BaseException:
-            self._file.close()
-            raise
+        with path.open("rb") as file:
+            head = _read_header(file, self.bytes_total, shown(path))
         self._head = head
         self._frame = head.container * head.channels
         there = self.bytes_total - head.offset
@@ -69,7 +65,6 @@ class WavRecording:
             )
             notes.append(self._damage + ".")
         if self.sets == 0:
-            self._file.close()
             raise refused(f"{name} holds no samples", "check that the recording had finished")
         bits = 8 * head.container
         floating = head.tag == FLOAT
@@ -94,24 +89,27 @@ class WavRecording:
     def blocks(self) -> Iterator[Block]:
         """Blocks in order. Raises RecordingDamaged at the end of a file that was cut."""
         placer = Placer()
-        self._file.seek(self._head.offset)
         left = self.sets or 0
-        while left:
-            want = min(left, SETS_AT_A_TIME)
-            try:
-                data = self._file.read(want * self._frame)
-            except OSError as error:
-                raise unreadable(self.path, error) from None
-            got = len(data) // self._frame
-            codes = _codes(data[: got * self._frame], self._head)
-            self._done += len(data)
-            if codes.dtype.kind == "f":
-                yield from placer.place_good(codes, np.asarray(np.isfinite(codes).all(axis=0)))
-            elif got:
-                yield placer.place(codes)
-            if got < want:
-                raise damaged(f"{shown(self.path)} became shorter while it was read")
-            left -= got
+        self._done = self._head.offset
+        try:
+            with self.path.open("rb") as file:
+                file.seek(self._head.offset)
+                while left:
+                    data = file.read(min(left, SETS_AT_A_TIME) * self._frame)
+                    got = len(data) // self._frame
+                    if not got:
+                        raise damaged(f"{shown(self.path)} became shorter while it was read")
+                    codes = _codes(data[: got * self._frame], self._head)
+                    self._done += len(data)
+                    left -= got
+                    if codes.dtype.kind == "f":
+                        yield from placer.place_good(
+                            codes, np.asarray(np.isfinite(codes).all(axis=0))
+                        )
+                    else:
+                        yield placer.place(codes)
+        except OSError as error:
+            raise unreadable(self.path, error) from None
         if self._damage:
             raise damaged(self._damage, "what is there was read; record again if the rest matters")
 
@@ -120,8 +118,7 @@ class WavRecording:
         return self._done
 
     def close(self) -> None:
-        """Let go of the file."""
-        self._file.close()
+        """Nothing stays open between two blocks."""
 
 
 def pcm_hint(name: str, bits: int, full: float | None, *, unsigned: bool = False) -> ChannelHint:
