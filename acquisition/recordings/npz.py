@@ -26,6 +26,8 @@ from acquisition.stream import ChannelHint, StreamInfo, clean
 # A compressed array must be unpacked whole; beyond this, that is asking for trouble.
 MOST_UNPACKED = 1 << 30  # bytes
 
+# What zipfile raises on hurt archives, beside its own error.
+_ODD = (OSError, ValueError, KeyError, EOFError, NotImplementedError, RuntimeError)
 _SAVE = "save with numpy.savez(file, samples=array, rate=hertz), the array channels × n"
 
 
@@ -128,7 +130,7 @@ class NpzRecording:
                     names=_words(archive, members, "names", name),
                     units=_words(archive, members, "units", name),
                 )
-        except (zipfile.BadZipFile, zlib.error, EOFError, NotImplementedError, RuntimeError) as e:
+        except (zipfile.BadZipFile, zlib.error, struct.error, *_ODD) as e:
             raise refused(
                 f"{name} is damaged: {clean(str(e), 80)}",
                 "copy it again; a cut .npz cannot be read",
@@ -177,6 +179,8 @@ def _header(file: BinaryIO, name: str) -> _Header:
 def _believe(head: _Header, size: int, name: str) -> None:
     """Refuse a header that promises more than there is."""
     want = head.dtype.itemsize
+    if want == 0 or any(side < 0 for side in head.shape):
+        raise refused(f"{name}: its header cannot be right: {head.shape}, {head.dtype}", _SAVE)
     for side in head.shape:
         want *= side  # plain integers: no overflow
     if want != size - head.length:
