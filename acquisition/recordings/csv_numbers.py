@@ -55,48 +55,47 @@ def parse(piece: bytes, separator: int, decimal: int, columns: int) -> Parsed:
         separator, decimal: character codes.
         columns: fields a line must have; lines with other counts are odd.
     """
-    padded = PAD + piece
-    raw = np.frombuffer(padded, np.uint8)
-    words = np.ndarray((len(padded) - 7,), "<u8", padded, 0, (1,))
-    marks = np.flatnonzero((raw == separator) | (raw == NEWLINE))
-    lines = raw[marks] == NEWLINE
-    count = int(np.count_nonzero(lines))
-    if len(marks) == count * columns and bool(lines[columns - 1 :: columns].all()):
-        # Every line has its separators: marks are a table already.
-        ends = marks.reshape(count, columns)
+    text = _Text(PAD + piece)
+    raw = text.raw[len(PAD) :]
+    newline = raw == NEWLINE
+    count = int(np.count_nonzero(newline))
+    marks = np.flatnonzero(newline | (raw == separator))
+    if len(marks) == count * columns and bool(newline[marks[columns - 1 :: columns]].all()):
+        # Every line has its separators: the marks are a table already.
         odd = np.zeros(count, np.bool_)
-        starts = np.empty_like(ends)
-        starts.ravel()[0] = len(PAD)
-        starts.ravel()[1:] = marks[:-1] + 1
+        ends = np.ascontiguousarray(marks.reshape(count, columns).T)
     else:
-        last = np.flatnonzero(lines)  # place of each newline among the marks
+        last = np.flatnonzero(newline[marks])  # place of each newline among the marks
         odd = np.diff(last, prepend=-1) != columns
         # An odd line's fields may lie anywhere; they are parsed and then thrown away.
-        places = np.maximum(last[:, None] - np.arange(columns - 1, -1, -1), 0)
+        places = np.maximum(last - np.arange(columns - 1, -1, -1)[:, None], 0)
         ends = marks[places]
-        before = np.where(places > 0, marks[places - 1], len(PAD) - 1)
-        starts = before + 1
-        line_starts = np.concatenate(([len(PAD)], marks[last][:-1] + 1))
-        starts[:, 0] = np.where(odd, starts[:, 0], line_starts)
-    table = np.empty((columns, count))
-    for column in range(columns):
-        _column(
-            raw,
-            words,
-            np.ascontiguousarray(starts[:, column]),
-            np.ascontiguousarray(ends[:, column]),
-            decimal,
-            table[column],
-            odd,
-        )
-    line_ends = ends[:, -1] - len(PAD)
+    line_ends = ends[-1]
     line_starts = np.concatenate(([0], line_ends[:-1] + 1)) if count else line_ends
+    table = np.empty((columns, count))
+    starts = line_starts
+    for column in range(columns):
+        _column(text, starts, ends[column], decimal, table[column], odd)
+        starts = np.minimum(ends[column] + 1, len(piece) - 1)  # an odd line's may lie beyond
     return Parsed(table, odd, line_starts, line_ends)
 
 
+class _Text:
+    """A padded piece as characters and as words; places count within the piece."""
+
+    def __init__(self, padded: bytes) -> None:
+        self.raw = np.frombuffer(padded, np.uint8)
+        count = len(padded) - 15
+        self.low: Words = np.ndarray((count,), "<u8", padded, 8, (1,))  # the 8 before a place
+        self.high: Words = np.ndarray((count,), "<u8", padded, 0, (1,))  # the 8 before those
+
+    def before(self, distance: int) -> npt.NDArray[np.uint8]:
+        """Characters so far before each place."""
+        return self.raw[len(PAD) - distance :]
+
+
 def _column(
-    raw: npt.NDArray[np.uint8],
-    words: Words,
+    text: _Text,
     starts: Places,
     ends: Places,
     decimal: int,
@@ -106,44 +105,47 @@ def _column(
     """Parse one field of every line into `out`; add what does not read to `odd`."""
     if not len(starts):
         return
-    first = raw[starts]
+    first = text.before(0)[starts]
     minus = first == MINUS
     signed = minus | (first == PLUS)
     length = ends - starts
     if signed.any():
-        length = length - signed
-    bad = (length < 1) | (length > LONGEST)
-    if bad.any():
-        odd |= bad
+        length -= signed
+    shortest, longest = int(length.min()), int(length.max())
+    if shortest < 1 or longest > LONGEST:
+        odd |= (length < 1) | (length > LONGEST)
         np.clip(length, 1, LONGEST, out=length)
-    low = _keep_last(words[ends - 8], length, 8)
-    high = _keep_last(words[ends - 16], length, 16) if int(length.max()) > 8 else None
+        shortest, longest = int(length.min()), int(length.max())
+    low = _keep_last(text.low[ends], length, 8)
+    high = _keep_last(text.high[ends], length, 16) if longest > 8 else None
     # Numbers of a column mostly have one count of decimals: try the last line's, then the rest.
-    left: Places | None = None  # lines whose mark has not been found
-    last = raw[int(ends[-1] - length[-1]) : int(ends[-1])]
+    last = text.before(0)[int(ends[-1] - length[-1]) : int(ends[-1])]
     where = np.flatnonzero(last == decimal)
     guess = len(last) - 1 - int(where[-1]) if len(where) else -1
-    order = ([guess] if guess >= 0 else []) + [d for d in range(LONGEST) if d != guess]
-    for decimals in order:
-        if left is None:
-            here = raw[ends - (1 + decimals)] == decimal
-            here &= length > max(decimals, 1)  # a digit beside the mark
-            if here.all():
-                _value(low, high, decimals, out, odd, slice(None))
-                left = np.empty(0, np.int64)
-                break
-            hit = np.flatnonzero(here)
-            left = np.flatnonzero(~here)
-        else:
-            here = raw[ends[left] - (1 + decimals)] == decimal
-            here &= length[left] > max(decimals, 1)
-            hit = left[here]
-            left = left[~here]
-        if len(hit):
-            _value(low, high, decimals, out, odd, hit)
-        if not len(left) or (decimals != guess and decimals > int(length[left].max())):
+    if guess >= 0:
+        here = text.before(1 + guess)[ends] == decimal
+        if shortest <= max(guess, 1):  # a digit beside the mark
+            here &= length > max(guess, 1)
+        if here.all():
+            _value(low, high, guess, out, odd, slice(None))
+            if minus.any():
+                np.negative(out, out=out, where=minus)
+            return
+        left = np.flatnonzero(~here)
+        _value(low, high, guess, out, odd, np.flatnonzero(here))
+    else:
+        left = np.arange(len(ends))
+    for decimals in range(LONGEST):
+        if not len(left) or decimals >= longest:
             break
-    if left is not None and len(left):
+        if decimals == guess:
+            continue
+        here = text.before(1 + decimals)[ends[left]] == decimal
+        here &= length[left] > max(decimals, 1)
+        if here.any():
+            _value(low, high, decimals, out, odd, left[here])
+            left = left[~here]
+    if len(left):
         _value(low, high, None, out, odd, left)
     if minus.any():
         np.negative(out, out=out, where=minus)

@@ -20,6 +20,7 @@ from acquisition.recordings.csv_layout import TimeKind, find_layout
 from acquisition.recordings.csv_lines import TextFile
 from acquisition.recordings.csv_numbers import parse
 from acquisition.recordings.csv_reading import number, split
+from acquisition.recordings.csv_slow import read_slowly
 from acquisition.recordings.placing import Placer
 from acquisition.recordings.readable import damaged, refused, shown, size_of, unreadable
 from acquisition.recordings.recording import RecordingOptions
@@ -32,6 +33,7 @@ from acquisition.recordings.timing import (
     other_step,
     refined,
     stamps,
+    undisturbed,
 )
 from acquisition.stream import ChannelHint, StreamInfo, clean
 
@@ -89,6 +91,10 @@ class CsvRecording:
         before: float | None = None
         dropped = 0  # lines at the end of the pieces before
         for line, table, times, good in self._tables():
+            if not dropped and good.all() and self._plainly_follow(times, before):
+                before = None if times is None else float(times[-1])
+                yield placer.place(table)
+                continue
             at = np.flatnonzero(good)
             if len(at) == 0:
                 dropped += len(good)
@@ -124,6 +130,11 @@ class CsvRecording:
 
     def close(self) -> None:
         """Nothing stays open between two pieces."""
+
+    def _plainly_follow(self, times: Floats | None, before: float | None) -> bool:
+        if times is None or self._timing is None:
+            return True
+        return undisturbed(self._timing, times, before)
 
     # -- the rate ---------------------------------------------------------------------------
 
@@ -219,22 +230,21 @@ class CsvRecording:
         self._ragged_end = 0
         before: float | None = None
         for piece in self._file.pieces():
-            first = line
-            line += piece.count(b"\n")
             if skip:
                 lines = piece.split(b"\n", skip)
-                passed = len(lines) - 1
-                skip -= passed
-                first += passed
+                skip -= len(lines) - 1
+                line += len(lines) - 1
                 piece = lines[-1]
                 if skip or not piece:
                     continue
             unfinished = not piece.endswith(b"\n")
             if unfinished:
                 piece += b"\n"
-            table, texts, good = self._numbers(piece, first)
+            first = line
+            table, texts, good, passed = self._numbers(piece, first)
+            line += passed
             if unfinished and len(good) and not good[-1]:
-                self._ragged_end = line
+                self._ragged_end = line - 1
                 table, texts, good = table[:, :-1], texts[:-1], good[:-1]
             if not len(good):
                 continue
@@ -244,7 +254,9 @@ class CsvRecording:
                 times, before = self._text_times(texts, before)
                 good &= np.isfinite(times)
             elif layout.time_at is not None:
-                times = table[layout.time_at] * layout.time_unit
+                times = table[layout.time_at]
+                if layout.time_unit != 1.0:
+                    times = times * layout.time_unit
                 out = [*out, layout.time_at]
             table = table[1:] if out == [0] else np.delete(table, out, axis=0) if out else table
             yield first, table, times, good
@@ -257,8 +269,8 @@ class CsvRecording:
         known = times[np.isfinite(times)]
         return times, float(known[-1]) if len(known) else before
 
-    def _numbers(self, piece: bytes, first: int) -> tuple[Floats, list[str], Mask]:
-        """Table (columns, n), time texts, lines that are usable."""
+    def _numbers(self, piece: bytes, first: int) -> tuple[Floats, list[str], Mask, int]:
+        """Table (columns, n), time texts, lines that are usable, lines passed in all."""
         layout = self._layout
         columns = layout.columns
         texts: list[str] = []
@@ -271,7 +283,7 @@ class CsvRecording:
             piece, texts = _without_text(piece, layout.separator, layout.time_at)
             columns -= 1 + layout.time_at
         blank = layout.separator.encode() + b" "
-        if layout.separator != " " and blank in piece:
+        if layout.separator != " " and b" " in piece and blank in piece:
             piece = piece.replace(blank, blank[:1])
         found = parse(piece, ord(layout.separator), ord(layout.decimal), columns)
         good = ~found.odd
@@ -279,7 +291,9 @@ class CsvRecording:
             at = np.flatnonzero(found.odd)
             lines = [piece[found.starts[k] : found.ends[k]] for k in at.tolist()]
             keep = np.ones(len(good), np.bool_)
-            rows, usable, wrong, nothing = self._slowly(lines, columns)
+            rows, wrong, nothing = read_slowly(lines, columns, layout)
+            rows[np.array(self._left_out(columns), np.intp)] = 0.0
+            usable = np.asarray(np.isfinite(rows).all(axis=0))
             found.table[:, at] = rows
             good[at] = usable
             keep[at[nothing]] = False
@@ -287,65 +301,12 @@ class CsvRecording:
                 raise self._no_table_any_more(lines, wrong, first + int(at[wrong][0]), columns)
             if not keep.all():
                 texts = [text for text, kept in zip(texts, keep, strict=False) if kept]
-                return found.table[:, keep], texts, good[keep]
-        return found.table, texts, good
-
-    def _slowly(self, lines: list[bytes], columns: int) -> tuple[Floats, Mask, Mask, Mask]:
-        """Lines one by one: rows (columns, n), usable, wrong field count, nothing in it at all."""
-        rows = np.full((columns, len(lines)), np.nan)
-        wrong = np.zeros(len(lines), np.bool_)
-        nothing = np.zeros(len(lines), np.bool_)
-        pending: list[int] = []
-        separator = self._layout.separator.encode()
-        for k, line in enumerate(lines):
-            if line.count(separator) == columns - 1 and b'"' not in line and line.strip():
-                pending.append(k)
-                continue
-            text = line.decode("latin-1").strip()
-            if not text or text[0] in "#%":
-                nothing[k] = True
-                continue
-            cells = split(text, self._layout.separator)
-            if self._layout.trailing and len(cells) == columns + 1:
-                cells.pop()
-            wrong[k] = len(cells) != columns
-            if not wrong[k]:
-                rows[:, k] = [self._cell(cell) for cell in cells]
-        self._in_bulk(lines, pending, rows)
-        rows[np.array(self._left_out(columns), np.intp)] = 0.0
-        return rows, np.asarray(np.isfinite(rows).all(axis=0)), wrong, nothing
+                return found.table[:, keep], texts, good[keep], len(keep)
+        return found.table, texts, good, len(good)
 
     def _left_out(self, columns: int) -> list[int]:
         """Columns without numbers, counted without the time's texts."""
         return [column - (self._layout.columns - columns) for column in self._layout.left_out]
-
-    def _in_bulk(self, lines: list[bytes], at: list[int], rows: Floats) -> None:
-        """Lines with the right separators, by numpy: halved until only the bad ones are left."""
-        if not at:
-            return
-        columns = len(rows)
-        if len(at) == 1:
-            cells = split(lines[at[0]].decode("latin-1"), self._layout.separator)
-            rows[:, at[0]] = [self._cell(cell) for cell in cells]
-            return
-        text = b"\n".join(lines[k] for k in at)
-        if self._layout.decimal == ",":
-            text = text.replace(b".", b"x").replace(b",", b".")
-        text = text.replace(self._layout.separator.encode(), b",").replace(b"\n", b",")
-        try:
-            flat = np.fromstring(text.decode("latin-1"), sep=",")
-        except ValueError:
-            flat = np.empty(0)
-        if len(flat) == columns * len(at):
-            rows[:, at] = flat.reshape(-1, columns).T
-            return
-        middle = len(at) // 2
-        self._in_bulk(lines, at[:middle], rows)
-        self._in_bulk(lines, at[middle:], rows)
-
-    def _cell(self, cell: str) -> float:
-        value = number(cell, self._layout.decimal)
-        return math.nan if value is None else value
 
     def _steps_otherwise(self, line: int, step: float) -> RecordingDamaged:
         usual = self._timing.step if self._timing is not None else math.nan

@@ -128,6 +128,27 @@ def refined(timing: Timing, lines: int, first: float, last: float) -> Timing:
     return Timing(span / (lines - 1), timing.slack, grain, span, timing.note)
 
 
+def undisturbed(timing: Timing, times: Floats, before: float | None) -> bool:
+    """Whether these lines plainly follow each other at the usual step: a quick look.
+
+    Args:
+        times: of lines that follow each other, (n,), n >= 1.
+        before: time of the line before them; None: there is none.
+    """
+    step = timing.step
+    if before is not None and not abs(times[0] - before - step) < 0.4 * step:
+        return False
+    if len(times) < 2:
+        return True
+    steps = np.diff(times)
+    mean = float(times[-1] - times[0]) / (len(times) - 1)
+    return bool(
+        steps.min() > 0.6 * step
+        and steps.max() < 1.4 * step
+        and abs(mean - step) < OTHER_STEP * step
+    )
+
+
 def missing(timing: Timing, times: Floats, before: float | None) -> npt.NDArray[np.int64]:
     """Sets missing before each line; -1 where time runs backwards (unknown).
 

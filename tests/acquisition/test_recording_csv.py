@@ -210,6 +210,16 @@ def test_a_cell_that_is_no_number_is_a_gap_of_its_set(tmp_path):
     assert codes[1, 400] == pytest.approx(I[401], abs=1e-4)
 
 
+@pytest.mark.parametrize("cell", [" ", "\t", "", "-", "+", ".", "1e", "0x1", "1_0", "1 2", "٣"])
+@pytest.mark.parametrize("near", ["1e0", "1"])
+def test_a_cell_that_only_looks_like_a_number_is_none(tmp_path, cell, near):
+    lines = rows().splitlines()
+    lines[700] = f"0.0875,{near},{near}"
+    lines[701] = f"0.087625,{near},{cell}"
+    _, blocks, _ = read(write(tmp_path, HEADER + "\n".join(lines) + "\n"))
+    assert [(b.index, b.lost_before) for b in blocks] == [(0, 0), (702, 1)]
+
+
 def test_without_a_time_column_a_bad_line_counts_as_one_set(tmp_path):
     lines = rows("{u:.3f},{i:.4f}\n").splitlines()
     lines[10] = "what is this"
