@@ -4,9 +4,11 @@ The reference is multiplied by a rotating phasor under a smooth taper of three c
 one-cycle moving averages in a row), so that harmonics and DC vanish; one such product stands
 every half cycle. The angle is the fundamental's phase there. A line through the phases of a
 window is its frequency; the scatter about the line says how sure that is and whether there is a
-fundamental at all.
+fundamental at all. Beyond the first and last point a parabola carries the phase on, so that a
+drifting frequency is followed there too.
 """
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,6 +18,10 @@ Floats = npt.NDArray[np.float64]
 
 TAPER_CYCLES = 3
 LOWEST, HIGHEST = 38.0, 72.0  # Hz: where a mains fundamental is looked for
+# To lock: the line's share of the power (white noise of n samples gives 40/n once in 1e16
+# windows), and phase and amplitude steady over two windows.
+ACQUIRE_SHARE, ACQUIRE_SCATTER, ACQUIRE_RIPPLE = 0.03, 0.12, 0.25
+CURVE_POINTS = 10  # fewer do not tell a drift from noise: a line it is
 
 
 class PhaseTracker:
@@ -86,6 +92,23 @@ class PhaseTracker:
         phase = float(np.interp(inside, at, self.phase))
         return phase + 2.0 * np.pi * self.nu * (position - inside)
 
+    def curve(self, first: float, last: float) -> "Curve":
+        """The parabola through the points between two positions; a line through few points."""
+        at = self.positions()
+        low, high = np.searchsorted(at, (first - 1e-6, last + 1e-6))
+        low = int(min(low, max(0, len(at) - 3)))
+        high = int(max(high, low + 1))
+        middle = float(at[low:high].mean())
+        u = (at[low:high] - middle) / self.hop
+        degree = 2 if len(u) >= CURVE_POINTS else min(1, len(u) - 1)
+        terms = np.vander(u, degree + 1, increasing=True)
+        factors, *_ = np.linalg.lstsq(terms, self.phase[low:high])
+        rest = self.phase[low:high] - terms @ factors
+        scatter = math.sqrt(float(rest @ rest) / max(len(u) - degree - 1, 1))
+        padded = np.zeros(3)
+        padded[: degree + 1] = factors
+        return Curve(middle, self.hop, padded, scatter)
+
     def fit(self, begins: Floats, ends: Floats) -> "LineFit":
         """Lines through the points of windows from `begins` to `ends`, each (w,)."""
         base = self.centre + self.hop * self._dropped
@@ -128,6 +151,34 @@ class PhaseTracker:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Curve:
+    """A parabola through phase points."""
+
+    middle: float  # position it is centred on
+    hop: float  # samples a point
+    factors: Floats  # (3,) of powers of (position - middle) / hop [rad]
+    scatter: float  # rad, about the parabola
+
+    def phase(self, position: Floats) -> Floats:
+        """Phase at positions [rad]."""
+        u = (position - self.middle) / self.hop
+        return np.asarray(self.factors[0] + u * (self.factors[1] + u * self.factors[2]))
+
+    def nu(self, position: float) -> float:
+        """Cycles a sample at a position."""
+        u = (position - self.middle) / self.hop
+        return float(self.factors[1] + 2.0 * u * self.factors[2]) / (2.0 * math.pi * self.hop)
+
+    def reach(self, phases: Floats, near: Floats) -> Floats:
+        """Positions of phases, each sought from the position `near` it."""
+        for _ in range(3):  # Newton: a quarter cycle off leaves 1e-9 after three
+            u = (near - self.middle) / self.hop
+            slope = (self.factors[1] + 2.0 * u * self.factors[2]) / self.hop
+            near = near - (self.phase(near) - phases) / slope
+        return near
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class LineFit:
     """Lines through phase points, one a window; every column (w,)."""
 
@@ -167,3 +218,36 @@ def coarse(samples: Floats, rate: float) -> tuple[float, float]:
     a, b, c = spectrum[peak - 1 : peak + 2]
     offset = 0.5 * (a - c) / (a - 2.0 * b + c) if a - 2.0 * b + c else 0.0
     return (peak + float(offset)) * step, float(b) ** 2 / 2.0 / power
+
+
+def acquire(
+    samples: Floats, at: int, rate: float, confirm: bool
+) -> tuple[PhaseTracker, Curve] | None:
+    """Look for a fundamental in `samples` (n,), which start at index `at`.
+
+    Args:
+        confirm: whether its share of the power, freed of harmonics by the taper, counts as well.
+    Returns:
+        a tracker that has seen them and the parabola through its points, or None.
+    """
+    rough, share = coarse(samples, rate)
+    need = max(ACQUIRE_SHARE, 40.0 / len(samples))
+    if share < need:
+        return None
+    nu = rough / rate
+    for _ in range(2):
+        tracker = PhaseTracker(nu, at)
+        tracker.extend(samples, at)
+        if len(tracker.phase) < 4:
+            return None
+        points = tracker.positions()
+        curve = tracker.curve(points[0], points[-1])
+        nu = curve.nu((points[0] + points[-1]) / 2.0)
+        if not 0.9 * LOWEST < nu * rate < 1.1 * HIGHEST:
+            return None
+    level = float(tracker.amplitude.mean())
+    if curve.scatter > ACQUIRE_SCATTER or float(tracker.amplitude.std()) > ACQUIRE_RIPPLE * level:
+        return None
+    if confirm and level**2 / 2.0 < 0.5 * need * float(np.var(samples)):
+        return None
+    return tracker, curve

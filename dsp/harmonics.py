@@ -69,9 +69,10 @@ def _group(samples: Floats, begins: Floats, ends: Floats, cycles: int, result: P
     turn *= np.sqrt(2.0) / (ends - begins)[:, None]
     row = np.arange(len(begins))[:, None, None]
     bins = first[:, :, None] + np.arange(_WIDTH)
-    # Below bin 0 the spectrum of a real signal is the conjugate of its mirror image.
-    mirrored = bins < 0
-    bins = np.abs(bins)
+    # Below bin 0, and above half the rate, the spectrum of a real signal is the conjugate of its
+    # mirror image.
+    mirrored = (bins < 0) | (bins > size // 2)
+    bins = np.where(bins > size // 2, size - bins, np.abs(bins))
     # Shift by the middle of the window: a factor per bin, taken into the kernel.
     half = (length - 1) / 2.0
     angle = 2.0 * np.pi * half / size * (first[:, :, None] + np.arange(_WIDTH))

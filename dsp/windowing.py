@@ -12,19 +12,18 @@ import numpy as np
 import numpy.typing as npt
 
 from dsp.edges import MARGIN
-from dsp.frequency import LineFit, PhaseTracker, coarse
+from dsp.frequency import HIGHEST, LOWEST, LineFit, PhaseTracker, acquire
+from dsp.period import cycle_length
 from dsp.waveform import Waveform
 from dsp.window import Flag, Lock, Windows
 
 Floats = npt.NDArray[np.float64]
 
 FIXED_TIME = 0.2  # s, an unlocked window
-HOLD_WINDOWS = 6  # windows without a fundamental until the lock is given up: 1.2 s
+HOLD_WINDOWS = 7  # windows without a fundamental until the lock is given up: 1.4 s
 OTHER_CHANNELS_AFTER = 5  # unlocked windows until other channels are tried as reference: 1 s
-# To lock: the line's share of the power (white noise of n samples gives 40/n once in 1e16
-# windows), and phase and amplitude steady over two windows.
-ACQUIRE_SHARE, ACQUIRE_SCATTER, ACQUIRE_RIPPLE = 0.03, 0.12, 0.25
 KEEP_SHARE, KEEP_SCATTER = 0.002, 0.35
+BROKEN_OFF = 0.5  # amplitude at a window's end over that within it
 RETUNE = 0.01  # relative distance of frequency and tracker that calls for a new taper
 RATE_JUMP = 0.005  # a rate that changes by more than this begins a new stretch
 
@@ -145,37 +144,25 @@ class Windower:
 
     def _acquire_on(self, channel: int, at: int, reach: int, confirm: bool) -> bool:
         x = self._buffer[channel, at - self._first : reach - self._first]
-        rough, share = coarse(x, self._rate)
-        need = max(ACQUIRE_SHARE, 40.0 / len(x))
-        if share < need:
+        found = acquire(x, at, self._rate, confirm)
+        if found is None:
             return False
-        nu = rough / self._rate
-        for _ in range(2):
-            tracker = PhaseTracker(nu, at)
-            tracker.extend(x, at)
-            if len(tracker.phase) < 4:
-                return False
-            points = tracker.positions()
-            fit = tracker.fit(points[:1], points[-1:])
-            nu = float(fit.nu[0])
-            if not 0.9 * 38.0 < nu * self._rate < 1.1 * 72.0:
-                return False
-        if fit.scatter[0] > ACQUIRE_SCATTER or fit.ripple[0] > ACQUIRE_RIPPLE:
-            return False
-        if confirm and float(fit.amplitude[0]) ** 2 / 2.0 < 0.5 * need * float(np.var(x)):
-            return False
+        tracker, curve = found
+        points = tracker.positions()
         self._reference = channel
-        self._tracker = PhaseTracker(nu, at)
+        self._nu = curve.nu(float(points[0] + points[-1]) / 2.0)
+        self._tracker = PhaseTracker(self._nu, at)
         self._tracker.extend(self._buffer[channel], self._first)
-        self._nu = nu
-        self._set_cycles(nu * self._rate)
+        self._set_cycles(self._nu * self._rate)
         self.lock = Lock.LOCKED
-        self.frequency = nu * self._rate
+        self.frequency = self._nu * self._rate
         self._failed = self._unlocked = 0
-        # Back along the line to the first upward zero crossing that has its margin.
-        phase = float(fit.phase[0]) + 2.0 * np.pi * nu * (self._begin - float(fit.at[0]))
-        turns = (phase + 0.5 * np.pi) / (2.0 * np.pi)
-        self._begin += (math.ceil(turns - 1e-9) - turns) / nu
+        # Back along the parabola to the first upward zero crossing that has its margin.
+        begin = np.array([self._begin])
+        crossing = np.ceil((curve.phase(begin) + 0.5 * np.pi) / (2.0 * np.pi) - 1e-9)
+        ahead = 2.0 * np.pi * crossing - 0.5 * np.pi
+        near = begin + (ahead - curve.phase(begin)) / (2.0 * np.pi * curve.nu(self._begin))
+        self._begin = max(self._begin, float(curve.reach(ahead, near)[0]))
         return True
 
     def _set_cycles(self, frequency: float) -> None:
@@ -191,7 +178,8 @@ class Windower:
             return run
         # The next window is not steady, or not yet there: hold it once its samples are.
         end = self._begin + self._cycles / self._nu
-        reach = end + 0.75 * tracker.length + MARGIN + 2
+        # A window that would end up to half a cycle later is then decided, however it was fed.
+        reach = end + 0.95 * tracker.length + MARGIN + 2
         if self._stop < reach:
             return None
         self._failed += 1
@@ -229,6 +217,9 @@ class Windower:
         positions = np.concatenate(([self._begin], ends))
         fit = tracker.fit(positions[:-1], positions[1:])
         good = self._good(fit, positions)
+        # Where the wave breaks off the taper sees half of one, and its phase is off by up to 20
+        # degrees: such an end is better carried on from before.
+        good &= np.interp(ends, points, tracker.amplitude) > BROKEN_OFF * fit.amplitude
         count = len(good) if good.all() else int(np.argmin(good))
         if not count:
             return None
@@ -263,13 +254,13 @@ class Windower:
         varying = np.maximum(square / n - (total / n) ** 2, 0.0)
         share = fit.amplitude**2 / 2.0
         hertz = fit.nu * self._rate
-        spans = np.diff(positions) * self._nu
+        spans = np.diff(positions) * np.append(self._nu, fit.nu[:-1])  # by the window before
         return np.asarray(
             (share > KEEP_SHARE * varying)
             & (share > 0.0)
             & (fit.scatter < KEEP_SCATTER)
-            & (hertz > 0.9 * 38.0)
-            & (hertz < 1.1 * 72.0)
+            & (hertz > 0.9 * LOWEST)
+            & (hertz < 1.1 * HIGHEST)
             & (np.abs(spans - self._cycles) < 0.6)
             & (fit.points >= 3)
         )
@@ -350,32 +341,56 @@ class Windower:
         while (run := self._steady_run(tracker)) is not None:
             runs.append(run)
             tracker = self._tracker or tracker
-        limit = self._stop - MARGIN - 1
         points = tracker.positions()
         if len(points) < 3:
             return runs
-        fit = tracker.fit(np.array([max(points[0], self._begin - 2 * tracker.hop)]), points[-1:])
-        nu = float(fit.nu[0]) if fit.points[0] >= 3 and fit.scatter[0] < KEEP_SCATTER else self._nu
-        whole = math.floor((limit - self._begin) * nu + 1e-9)
+        curve = tracker.curve(max(points[0], points[-1] - 20 * tracker.hop), points[-1])
+        limit = np.array([self._stop - MARGIN - 1.0])
+        phase = tracker.phase_at(self._begin)
+        if self._begin > points[-1] or self._begin < points[0]:
+            phase = float(curve.phase(np.array([self._begin]))[0])
+        whole = math.floor((float(curve.phase(limit)[0]) - phase) / (2.0 * np.pi) + 1e-9)
         windows = whole // self._cycles
-        if windows >= 1 or (self._emitted == 0 and whole >= 1):
+        if curve.scatter < KEEP_SCATTER and (windows >= 1 or (self._emitted == 0 and whole >= 1)):
             cycles = self._cycles if windows else whole
-            ends = self._begin + cycles * np.arange(max(windows, 1) + 1) / nu
-            count = len(ends) - 1
-            runs.append(
-                self._emit(
-                    ends,
-                    np.full(count, nu * self._rate),
-                    np.full(count, float(fit.u_nu[0]) * self._rate),
-                    self.lock if self.lock is not Lock.SEARCHING else Lock.LOCKED,
-                    Flag.NONE if windows else Flag.EDGE,
-                    cycles=cycles,
+            turns = float(cycles) * np.arange(1.0, max(windows, 1) + 1.0)
+            near = self._begin + turns / self._nu
+            ends = curve.reach(phase + 2.0 * np.pi * turns, near)
+            ends = np.minimum(ends, limit)
+            positions = np.append(self._begin, ends)
+            fit = tracker.fit(positions[:-1], positions[1:])
+            if np.all(np.diff(positions) > 0.5 * cycles / self._nu):
+                runs.append(
+                    self._emit(
+                        positions,
+                        cycles / np.diff(positions) * self._rate,
+                        fit.u_nu * self._rate,
+                        self.lock if self.lock is not Lock.SEARCHING else Lock.LOCKED,
+                        Flag.NONE if windows else Flag.EDGE,
+                        cycles=cycles,
+                    )
                 )
-            )
         return runs
 
     def _short(self) -> Windows:
-        """All there is of a stretch too short for anything else."""
+        """A stretch too short for a lock: the whole cycles it holds, or all there is."""
+        n = self._stop - self._origin
+        for channel in (self._preferred, *range(self._channels)):
+            length = cycle_length(self._buffer[channel], self._rate)
+            if not math.isfinite(length):
+                continue
+            cycles = int(n / length + 1e-6)
+            # In the middle, so that the margins are real samples if there are any to spare.
+            begin = self._origin + max(0.0, (n - cycles * length) / 2.0)
+            return self._emit(
+                np.array([begin, min(begin + cycles * length, float(self._stop))]),
+                np.array([self._rate / length]),
+                # Half a sample either way at the outermost (rectangular) of what was compared.
+                np.array([self._rate / length / (n - length) / math.sqrt(12.0)]),
+                Lock.LOCKED,
+                Flag.EDGE,
+                cycles=cycles,
+            )
         positions = np.array([self._origin, self._stop], dtype=float)
         return self._emit(
             positions,
