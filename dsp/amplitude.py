@@ -23,49 +23,49 @@ JUMP_SHARE, JUMP_RATIO = 0.06, 3.0
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Amplitudes:
-    """Figures of one channel over w windows of p parts (cycles; 1 when unlocked)."""
+    """Figures of c channels over w windows of p parts (cycles; equal times when unlocked)."""
 
-    mean_square: Floats  # (w, p)
-    mean: Floats  # (w,)
-    arv: Floats  # (w,) of x as it is
-    arv_ac: Floats  # (w, p) of x less the window's mean
-    peak_max: Floats  # (w,)
-    peak_min: Floats  # (w,)
-    jump_square: Floats  # (w,) what unseen edge positions leave open in mean_square
-    jump_arv: Floats  # (w,) the same in arv_ac
-    jump_share: Floats  # (w,) how far it is shared by all edges alike: 1 wholly; 0 without jumps
+    mean_square: Floats  # (c, w, p)
+    mean: Floats  # (c, w)
+    arv: Floats  # (c, w) of x as it is
+    arv_ac: Floats  # (c, w, p) of x less the window's mean
+    peak_max: Floats  # (c, w)
+    peak_min: Floats  # (c, w)
+    jump_square: Floats  # (c, w) what unseen edge positions leave open in mean_square
+    jump_arv: Floats  # (c, w) the same in arv_ac
+    jump_share: Floats  # (c, w) how far edges share it alike: 1 wholly; 0 without jumps
 
 
 def measure_amplitudes(
     x: Floats, begins: Floats, ends: Floats, parts: int, cyclic: bool = True
 ) -> Amplitudes:
-    """Sum one channel.
+    """Sum all channels.
 
     Args:
-        x: samples (n,), with MARGIN samples before the first and after the last end.
+        x: samples (c, n), with MARGIN samples before the first and after the last end.
         begins, ends: (w,) positions in samples from the start of `x`; windows touch.
         parts: equal parts to divide each window into.
         cyclic: whether the parts are cycles, in which an edge comes back at the same place.
     """
-    w = len(begins)
-    cuts = begins[:, None] + (ends - begins)[:, None] * (np.arange(parts) / parts)
+    c, w = len(x), len(begins)
+    span = ends - begins
+    cuts = begins[:, None] + span[:, None] * (np.arange(parts) / parts)
     positions = np.concatenate((cuts.ravel(), ends[-1:]))
-    widths = np.diff(positions).reshape(w, parts)
+    widths = (positions[1:] - positions[:-1]).reshape(w, parts)
     at = Ends(positions)
-    mean_square = at.sums(x * x).reshape(w, parts) / widths
-    total = at.sums(x).reshape(w, parts)
-    span = widths.sum(1)
-    mean = total.sum(1) / span
+    mean_square = at.sums(x * x).reshape(c, w, parts) / widths
+    mean = at.sums(x).reshape(c, w, parts).sum(2) / span
     whole = Ends(np.concatenate((begins, ends[-1:])))
-    arv = _rectified(x, whole, np.zeros(1), 1) / span
-    arv_ac = _rectified(x, at, mean, parts).reshape(w, parts) / widths
+    arv = _rectified(x, whole, np.zeros((c, 1)), 1) / span
+    arv_ac = _rectified(x, at, mean, parts).reshape(c, w, parts) / widths
     low = np.ceil(begins).astype(np.int64)
-    high = np.append(low[1:], max(int(np.ceil(ends[-1])), int(low[-1]) + 1))
-    cut = x[: high[-1]]
-    peak_max = np.maximum.reduceat(cut, low)
-    peak_min = np.minimum.reduceat(cut, low)
-    share = _shared((ends - begins) / parts, parts) if cyclic else np.ones(w)
+    stop = max(int(np.ceil(ends[-1])), int(low[-1]) + 1)
+    peak_max = np.maximum.reduceat(x[:, :stop], low, axis=1)
+    peak_min = np.minimum.reduceat(x[:, :stop], low, axis=1)
     jump_square, jump_arv, seen = _jumps(x, begins, ends, mean, peak_max - peak_min)
+    share = np.ones(w)
+    if cyclic and seen.any():
+        share = _shared(span / parts, parts)
     return Amplitudes(
         mean_square=mean_square,
         mean=mean,
@@ -80,53 +80,57 @@ def measure_amplitudes(
 
 
 def _rectified(x: Floats, at: Ends, mean: Floats, parts: int) -> Floats:
-    """Integral of |x - mean| over every part; `mean` one a window, or a single one."""
-    count = len(at.whole) - 1
-    if len(mean) == 1:
-        z = x - mean[0]
-        shift: Floats = np.broadcast_to(mean[0], len(at.whole))
+    """Integral of |x - mean| over every part; `mean` (c, windows), or (c, 1) for all."""
+    if mean.shape[1] == 1:
+        z = x - mean
+        shift = np.repeat(mean, len(at.whole), axis=1)
     else:
         lengths = np.diff(at.whole[::parts])
         lengths[0] += at.whole[0]
-        lengths[-1] += len(x) - at.whole[-1]
-        z = x - np.repeat(mean, lengths)
-        shift = np.repeat(mean, parts)
-        shift = np.append(shift, mean[-1])
+        lengths[-1] += x.shape[1] - at.whole[-1]
+        z = np.repeat(mean, lengths, axis=1)
+        np.subtract(x, z, out=z)
+        shift = np.concatenate((np.repeat(mean, parts, axis=1), mean[:, -1:]), axis=1)
     size = np.abs(z)
-    inside = np.add.reduceat(size, at.inner)[:-1]
+    inside = np.add.reduceat(size, at.inner, axis=1)[:, :-1]
     # The samples about an end belong to both windows, each with its own mean.
-    taps = x[at.taps]
-    left = np.append(shift[0], shift[:-1])  # mean of the part that ends here
-    upper = at.partial(np.abs(taps - left[:, None]))
-    lower = at.partial(np.abs(taps - shift[:, None]))
-    sums = inside + upper[1:] - lower[:-1]
-    return sums - _kinks(z, size, at, count)
+    taps = x[:, at.taps]
+    left = np.concatenate((shift[:, :1], shift[:, :-1]), axis=1)  # of the part that ends here
+    upper = at.partial(np.abs(taps - left[:, :, None]))
+    lower = at.partial(np.abs(taps - shift[:, :, None]))
+    return np.asarray(inside + upper[:, 1:] - lower[:, :-1] - _kinks(z, at))
 
 
-def _kinks(z: Floats, size: Floats, at: Ends, count: int) -> Floats:
-    """What smooth zero crossings add too much, summed per part."""
-    sign = z >= 0.0
+def _kinks(z: Floats, at: Ends) -> Floats:
+    """What smooth zero crossings add too much, summed per part: (c, parts)."""
+    c, length = z.shape
+    count = len(at.whole) - 1
+    sign = (z >= 0.0).ravel()
     n = np.flatnonzero(sign[1:] != sign[:-1])
-    n = n[(n >= 1) & (n + 2 < len(z))]
-    step = z[n + 1] - z[n]
-    bend = np.maximum(
-        np.abs(z[n - 1] - 2.0 * z[n] + z[n + 1]), np.abs(z[n] - 2.0 * z[n + 1] + z[n + 2])
-    )
-    n = n[bend < 0.5 * np.abs(step)]
-    a, b = size[n], size[n + 1]
-    excess = a * b / (a + b) - (a + b) / 6.0
-    position = n + a / (a + b)
+    row, column = np.divmod(n, length)
+    inner = (column >= 1) & (column + 2 < length)
+    n, row, column = n[inner], row[inner], column[inner]
+    flat = z.ravel()
+    a, b = flat[n], flat[n + 1]
+    step = b - a
+    bend = np.maximum(np.abs(step - a + flat[n - 1]), np.abs(step + b - flat[n + 2]))
+    smooth = np.flatnonzero(bend < 0.5 * np.abs(step))
+    row, column, a, step = row[smooth], column[smooth], a[smooth], np.abs(step[smooth])
+    share = np.abs(a) / step
+    excess = step * (share * (1.0 - share) - 1.0 / 6.0)
+    position = column + share
     # An end sits on the fundamental's own crossing: what lies near it is shared as the ends
     # share the samples.
     ends = at.positions
     part = np.searchsorted(ends, position, side="right") - 1
-    result = np.zeros(count)
-    for k in (part - 1, part, part + 1):
-        inside = (k >= 0) & (k < count)
-        k, where = k[inside], position[inside]
-        weight = spline_step(ends[k + 1] - where) - spline_step(ends[k] - where)
-        result += np.bincount(k, excess[inside] * weight, count)
-    return result
+    part = np.minimum(np.maximum(part, 0), count - 1)
+    nearest = part + (position - ends[part] > ends[part + 1] - position)
+    below = spline_step(ends[nearest] - position)
+    # One column more on either side takes what lies outside the windows.
+    key = row * (count + 2) + nearest
+    shares = np.bincount(key, excess * below, c * (count + 2))
+    shares += np.bincount(key + 1, excess * (1.0 - below), c * (count + 2))
+    return np.asarray(shares.reshape(c, count + 2)[:, 1:-1])
 
 
 def _shared(cycle: Floats, count: int) -> Floats:
@@ -150,26 +154,33 @@ def _shared(cycle: Floats, count: int) -> Floats:
 def _jumps(
     x: Floats, begins: Floats, ends: Floats, mean: Floats, span: Floats
 ) -> tuple[Floats, Floats, Floats]:
-    """What the unknown place of a jump between two samples leaves open, per window.
+    """What the unknown place of a jump between two samples leaves open, (c, w) each.
 
     A jump from a to b lies anywhere between its samples (rectangular, 1 sample wide), so it
     leaves |b^2 - a^2| / sqrt(12) samples of square open; were all edges placed alike between
     samples, they would add up. Also whether there are jumps, 0 or 1.
     """
-    w = len(begins)
-    zero = np.zeros(w)
-    step = np.abs(np.diff(x))
-    n = np.flatnonzero(step > JUMP_SHARE * float(span.max(initial=0.0)))
-    n = n[(n >= 1) & (n + 1 < len(step))]
-    if not len(n) or not span.max(initial=0.0) > 0.0:
+    c, w = mean.shape
+    zero = np.zeros((c, w))
+    reach = span.max(axis=1, keepdims=True)
+    step = np.abs(x[:, 1:] - x[:, :-1])
+    large = step > JUMP_SHARE * reach
+    large[:, [0, -1]] = False
+    n = np.flatnonzero(large)
+    if not len(n):
         return zero, zero, zero
-    n = n[step[n] > JUMP_RATIO * np.maximum(step[n - 1], step[n + 1])]
-    part = np.searchsorted(begins, n, side="right") - 1
-    kept = (part >= 0) & (n < ends[-1])
-    n, part = n[kept], part[kept]
-    a, b = x[n], x[n + 1]
-    width = (ends - begins) * np.sqrt(12.0)
-    square = np.bincount(part, np.abs(b * b - a * a), w) / width
-    shift = mean[part]
-    arv = np.bincount(part, np.abs(np.abs(b - shift) - np.abs(a - shift)), w) / width
-    return square, arv, (np.bincount(part, minlength=w) > 0).astype(np.float64)
+    flat, width = step.ravel(), step.shape[1]
+    n = n[flat[n] > JUMP_RATIO * np.maximum(flat[n - 1], flat[n + 1])]
+    row, column = np.divmod(n, width)
+    part = np.searchsorted(begins, column, side="right") - 1
+    kept = (part >= 0) & (column < ends[-1])
+    row, column, part = row[kept], column[kept], part[kept]
+    a, b = x[row, column], x[row, column + 1]
+    shift = mean[row, part]
+    key = row * w + part
+    # Three sums of one bincount each; the root of 12 is the rectangular distribution's.
+    lengths = (ends - begins) * np.sqrt(12.0)
+    square = np.bincount(key, np.abs(b * b - a * a), c * w).reshape(c, w) / lengths
+    arv = np.bincount(key, np.abs(np.abs(b - shift) - np.abs(a - shift)), c * w).reshape(c, w)
+    seen = np.bincount(key, minlength=c * w).reshape(c, w) > 0
+    return square, arv / lengths, seen.astype(np.float64)

@@ -37,7 +37,13 @@ class PhaseTracker:
         self.length = len(taper)
         n = np.arange(self.length) - (self.length - 1) / 2.0
         kernel = taper * np.exp(-2j * np.pi * nu * n) * (2.0 / taper.sum())
-        self._kernel = np.column_stack((kernel.real, kernel.imag))
+        # The kernel in pieces of a hop, one beside the other: every sample then enters one
+        # product only, and a point is the sum of its pieces' results.
+        self._pieces = -(-self.length // self.hop)
+        padded = np.zeros(self._pieces * self.hop, np.complex128)
+        padded[: self.length] = kernel
+        pieces = padded.reshape(self._pieces, self.hop).T
+        self._kernel = np.concatenate((pieces.real, pieces.imag), axis=1)
         self.origin = first_sample  # sample under the first taper's first weight
         self.centre = first_sample + (self.length - 1) / 2.0  # position of point 0
         self.phase = np.empty(0)  # unwrapped angle of the fundamental as a cosine [rad]
@@ -56,12 +62,16 @@ class PhaseTracker:
     def extend(self, samples: Floats, first: int) -> None:
         """Add every point that `samples` (n,), which start at index `first`, allow."""
         skip = self.next_sample() - first
-        count = (len(samples) - skip - self.length) // self.hop + 1
+        count = (len(samples) - skip - self._pieces * self.hop) // self.hop + 1
         if count <= 0:
             return
-        views = np.lib.stride_tricks.sliding_window_view(samples[skip:], self.length)
-        product = views[:: self.hop][:count] @ self._kernel
-        angles = np.arctan2(product[:, 1], product[:, 0])
+        blocks = count + self._pieces - 1
+        shares = samples[skip : skip + blocks * self.hop].reshape(blocks, self.hop) @ self._kernel
+        real, imaginary = np.zeros(count), np.zeros(count)
+        for piece in range(self._pieces):
+            real += shares[piece : piece + count, piece]
+            imaginary += shares[piece : piece + count, self._pieces + piece]
+        angles = np.arctan2(imaginary, real)
         ahead = 2.0 * np.pi * self.nu * self.hop
         last = self.phase[-1] if len(self.phase) else angles[0] - ahead
         steps = np.diff(angles, prepend=last) - ahead
@@ -70,7 +80,7 @@ class PhaseTracker:
         # cumsum drifts by rounding only; snap each point back to its own angle.
         phase = angles + 2.0 * np.pi * np.round((phase - angles) / (2.0 * np.pi))
         self.phase = np.concatenate((self.phase, phase))
-        self.amplitude = np.concatenate((self.amplitude, np.hypot(product[:, 0], product[:, 1])))
+        self.amplitude = np.concatenate((self.amplitude, np.hypot(real, imaginary)))
 
     def drop_before(self, position: float) -> None:
         """Let go of points before `position`, keeping two."""

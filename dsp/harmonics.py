@@ -62,29 +62,34 @@ def _group(samples: Floats, begins: Floats, ends: Floats, cycles: int, result: P
     k = np.arange(1, top + 1)
     place = nu[:, None] * k * size
     first = np.ceil(place - _WIDTH / 2.0).astype(np.int64)
-    z = (first[:, :, None] + np.arange(_WIDTH) - place[:, :, None]) * (2.0 / _WIDTH)
+    z = ((first - place)[:, :, None] + np.arange(_WIDTH)) * (2.0 / _WIDTH)
     kernel = np.exp(_BETA * (np.sqrt(np.maximum(1.0 - z * z, 0.0)) - 1.0))
-    # The FFT counts from the padded array's middle; turn to the window's begin.
-    turn = np.exp(2j * np.pi * nu[:, None] * k * (begins - start - (length - 1) / 2.0)[:, None])
+    # The samples lie in the padded array with their middle at 0; turn to the window's begin.
+    middle = length // 2
+    turn = np.exp(2j * np.pi * nu[:, None] * k * (begins - start - middle)[:, None])
     turn *= np.sqrt(2.0) / (ends - begins)[:, None]
-    row = np.arange(len(begins))[:, None, None]
-    bins = first[:, :, None] + np.arange(_WIDTH)
-    # Below bin 0, and above half the rate, the spectrum of a real signal is the conjugate of its
-    # mirror image.
-    mirrored = (bins < 0) | (bins > size // 2)
-    bins = np.where(bins > size // 2, size - bins, np.abs(bins))
-    # Shift by the middle of the window: a factor per bin, taken into the kernel.
-    half = (length - 1) / 2.0
-    angle = 2.0 * np.pi * half / size * (first[:, :, None] + np.arange(_WIDTH))
-    steered = kernel * np.exp(1j * angle)
+    row = np.arange(len(begins))[:, None]
     absent = k > orders[:, None]
+    # Only in windows of few cycles does the kernel reach below bin 0, or above half the rate.
+    below = max(0, -int(first.min()))
+    above = max(0, int(first.max()) + _WIDTH - (size // 2 + 1))
+    padded = np.zeros((len(begins), size))
     for c, channel in enumerate(samples):
         views = np.lib.stride_tricks.sliding_window_view(channel, length)[start]
-        spectrum = np.fft.rfft(views * weights, size, axis=1)
-        values = spectrum[row, bins]
-        if mirrored.any():
-            values = np.where(mirrored, values.conj(), values)
-        found = (values * steered).sum(2) * turn
+        np.multiply(views[:, middle:], weights[:, middle:], out=padded[:, : length - middle])
+        np.multiply(views[:, :middle], weights[:, :middle], out=padded[:, size - middle :])
+        spectrum = np.fft.rfft(padded, axis=1)
+        if below or above:  # there the spectrum of a real signal is its mirrored conjugate
+            bins = np.arange(-below, size // 2 + 1 + above)
+            mirrored = (bins < 0) | (bins > size // 2)
+            bins = np.where(bins > size // 2, size - bins, np.abs(bins))
+            spectrum = np.where(mirrored, spectrum[:, bins].conj(), spectrum[:, bins])
+        runs = np.lib.stride_tricks.sliding_window_view(spectrum, _WIDTH, axis=1)
+        values = runs[row, first + below]
+        found = np.empty(turn.shape, np.complex128)
+        np.einsum("wkt,wkt->wk", values.real, kernel, out=found.real)
+        np.einsum("wkt,wkt->wk", values.imag, kernel, out=found.imag)
+        found *= turn
         found[absent] = np.nan
         result[:, c, :top] = found
 
@@ -94,7 +99,7 @@ def _compensation(length: int, size: int) -> Floats:
     """One over the kernel's transform at every sample, by Gauss-Legendre quadrature."""
     nodes, quadrature = np.polynomial.legendre.leggauss(60)
     shape = quadrature * np.exp(_BETA * (np.sqrt(1.0 - nodes * nodes) - 1.0))
-    n = (np.arange(length) - (length - 1) / 2.0) / size
+    n = (np.arange(length) - length // 2) / size
     transform = (_WIDTH / 2.0) * (np.cos(np.pi * _WIDTH * np.outer(n, nodes)) @ shape)
     factors: Floats = 1.0 / transform
     factors.setflags(write=False)
