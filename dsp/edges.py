@@ -8,10 +8,13 @@ twice as wide as the samples stand apart: that takes a wave with much near 0.4 o
 to under 1 ppm.
 """
 
+from typing import TypeVar
+
 import numpy as np
 import numpy.typing as npt
 
 Floats = npt.NDArray[np.float64]
+Number = TypeVar("Number", np.float64, np.complex128)
 
 SPREAD = 2  # knots of the spline are this many samples apart
 REACH = 2 * SPREAD  # samples on either side of an end that are weighted
@@ -65,3 +68,14 @@ def end_weights(a: Floats, b: Floats, start: npt.NDArray[np.int64], length: int)
     tail = np.arange(max(0, int(np.min(np.floor(b) - start)) - REACH - 1), length)
     weights[:, tail] *= spline_step(b[:, None] - n[:, tail])
     return weights
+
+
+def runs(x: npt.NDArray[Number], length: int) -> npt.NDArray[Number]:
+    """Every run of `length` neighbours on the last axis of x (n,) or (k, n), without a copy.
+
+    What numpy's sliding_window_view gives, in a tenth of its time, which counts for one window
+    live. x must be contiguous on that axis.
+    """
+    shape = (*x.shape[:-1], x.shape[-1] - length + 1, length)
+    strides = (*x.strides, x.strides[-1])
+    return np.ndarray(shape, x.dtype, x, 0, strides)

@@ -10,7 +10,7 @@ import functools
 import numpy as np
 import numpy.typing as npt
 
-from dsp.edges import REACH, end_weights
+from dsp.edges import REACH, end_weights, runs
 
 Floats = npt.NDArray[np.float64]
 Phasors = npt.NDArray[np.complex128]
@@ -75,7 +75,7 @@ def _group(samples: Floats, begins: Floats, ends: Floats, cycles: int, result: P
     above = max(0, int(first.max()) + _WIDTH - (size // 2 + 1))
     padded = np.zeros((len(begins), size))
     for c, channel in enumerate(samples):
-        views = np.lib.stride_tricks.sliding_window_view(channel, length)[start]
+        views = runs(channel, length)[start]
         np.multiply(views[:, middle:], weights[:, middle:], out=padded[:, : length - middle])
         np.multiply(views[:, :middle], weights[:, :middle], out=padded[:, size - middle :])
         spectrum = np.fft.rfft(padded, axis=1)
@@ -84,8 +84,7 @@ def _group(samples: Floats, begins: Floats, ends: Floats, cycles: int, result: P
             mirrored = (bins < 0) | (bins > size // 2)
             bins = np.where(bins > size // 2, size - bins, np.abs(bins))
             spectrum = np.where(mirrored, spectrum[:, bins].conj(), spectrum[:, bins])
-        runs = np.lib.stride_tricks.sliding_window_view(spectrum, _WIDTH, axis=1)
-        values = runs[row, first + below]
+        values = runs(spectrum, _WIDTH)[row, first + below]
         found = np.empty(turn.shape, np.complex128)
         np.einsum("wkt,wkt->wk", values.real, kernel, out=found.real)
         np.einsum("wkt,wkt->wk", values.imag, kernel, out=found.imag)

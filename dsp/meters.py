@@ -117,11 +117,12 @@ def _limited_rms(card: MeterCard, windows: Windows, readings: Readings) -> Float
 
 def _rolled_off(bandwidth: float, readings: Readings, square: Floats) -> Floats:
     """Mean square lost above the bandwidth: each harmonic by one pole, the rest as the last."""
-    power = np.abs(np.nan_to_num(readings.harmonics)) ** 2
+    known = np.isfinite(readings.harmonics.real)
+    power = np.where(known, np.abs(readings.harmonics), 0.0) ** 2
     order = np.arange(1, power.shape[2] + 1)
-    hertz = np.nan_to_num(readings.frequency)[:, None] * order
+    hertz = np.where(readings.frequency > 0.0, readings.frequency, 0.0)[:, None] * order
     lost = 1.0 - 1.0 / (1.0 + (hertz / bandwidth) ** 2)
-    measured = np.count_nonzero(np.isfinite(readings.harmonics.real), axis=2)
+    measured = known.sum(axis=2)
     top = np.take_along_axis(lost, np.maximum(measured - 1, 0), axis=1)
     rest = np.maximum(square - power.sum(2), 0.0)
     return np.asarray((power * lost[:, None, :]).sum(2) + np.where(measured > 0, rest * top, 0.0))
@@ -136,10 +137,14 @@ def _cut_off(card: MeterCard, windows: Windows, readings: Readings) -> Floats:
     shift = readings.mean if card.coupling is Coupling.AC else np.zeros_like(readings.mean)
     peak = np.maximum(np.abs(readings.peak_max - shift), np.abs(readings.peak_min - shift))
     lost = np.zeros_like(readings.rms)
-    for w, c in zip(*np.nonzero((peak > ceiling) & (ceiling > 0.0)), strict=True):
-        a = max(0, int(np.ceil(windows.begins[w])) - windows.first)
-        b = int(np.ceil(windows.ends[w])) - windows.first
-        over = np.abs(windows.samples[c, a:b] - shift[w, c])
-        over = over[over > ceiling[w, c]]
-        lost[w, c] = float(np.sum(over**2 - ceiling[w, c] ** 2)) / max(b - a, 1)
+    over = (peak > ceiling) & (ceiling > 0.0)
+    low = np.maximum(np.ceil(windows.begins).astype(np.int64) - windows.first, 0)
+    stop = min(int(np.ceil(windows.ends[-1])) - windows.first, windows.samples.shape[1])
+    stop = max(stop, int(low[-1]) + 1)
+    lengths = np.diff(low, append=stop)
+    for c in np.flatnonzero(over.any(axis=0)):
+        z = np.abs(windows.samples[c, low[0] : stop] - np.repeat(shift[:, c], lengths))
+        top = np.repeat(np.where(over[:, c], ceiling[:, c], np.inf), lengths)
+        beyond = np.where(z > top, z, 0.0) ** 2 - np.where(z > top, top, 0.0) ** 2
+        lost[:, c] = np.add.reduceat(beyond, low - low[0]) / lengths
     return lost

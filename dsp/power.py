@@ -78,12 +78,19 @@ def _one(
     positions = np.append(windows.begins, windows.ends[-1]) - (windows.first - low)
     p = Ends(positions).sums(product) / (windows.ends - windows.begins)
     phasor_v, phasor_i = readings.harmonics[:, v], readings.harmonics[:, i]
-    cross = np.nan_to_num(phasor_v * phasor_i.conj())
+    cross = phasor_v * phasor_i.conj()
+    cross[np.isnan(cross.real)] = 0.0
     late = channels[i].delay - channels[v].delay
     if late:
         order = np.arange(1, cross.shape[1] + 1)
         # Sampled `late` s later, the current's phasor is ahead by that much; turn it back.
-        turn = np.exp(2j * np.pi * late * np.nan_to_num(readings.frequency)[:, None] * order)
+        turn = np.exp(
+            2j
+            * np.pi
+            * late
+            * np.where(readings.frequency > 0.0, readings.frequency, 0.0)[:, None]
+            * order
+        )
         p = p + (cross * turn - cross).real.sum(1)
         cross = cross * turn
     s = readings.rms[:, v] * readings.rms[:, i]

@@ -105,3 +105,13 @@ class Readings:
             u={name: float(column[w, c]) for name, column in self.u.items()},
             flags=Flag(int(self.flags[w, c])),
         )
+
+
+def comparable(readings: Readings) -> npt.NDArray[np.bool_]:
+    """(w, c): where a comparison of meters says something.
+
+    Not on a signal too small for its converter, and not on a scrap of less than a cycle.
+    """
+    scrap = int(Flag.EDGE | Flag.UNLOCKED)
+    flags = readings.flags
+    return np.asarray(((flags & int(Flag.LOW_SIGNAL)) == 0) & ((flags & scrap) != scrap))
