@@ -36,7 +36,7 @@ def add_recording(parser: argparse.ArgumentParser) -> None:
         type=scale,
         action="append",
         default=[],
-        help="units at full scale of a WAV, FLAC channel: ch1=400 or ch1=400V",
+        help="units at full scale of a WAV or FLAC channel, such as ch1=400V",
     )
     parser.add_argument(
         "--format",
@@ -67,16 +67,16 @@ def seconds(text: str) -> float:
     return float(found[1]) * _UNITS[found[2]]
 
 
-def scale(text: str) -> tuple[str, float]:
-    """CHANNEL=UNITS_AT_FULL_SCALE, the number with or without a unit behind it."""
+def scale(text: str) -> tuple[str, tuple[float, str]]:
+    """CHANNEL=UNITS_AT_FULL_SCALE, with or without a unit: (channel, (number, unit))."""
     name, equals, value = text.partition("=")
-    found = re.fullmatch(r"\s*([0-9.eE+-]+)\s*(?:V|A)?\s*", value)
+    found = re.fullmatch(r"\s*([0-9.eE+-]+)\s*([kmM]?[VA])?\s*", value)
     try:
         number = float(found[1]) if found is not None else math.nan
     except ValueError:
         number = math.nan
-    if not equals or not name.strip() or not (math.isfinite(number) and number != 0.0):
+    if found is None or not (equals and name.strip() and math.isfinite(number) and number != 0.0):
         raise argparse.ArgumentTypeError(
-            f"{text!r} does not read as CHANNEL=UNITS, such as ch1=400"
+            f"{text!r} does not read as CHANNEL=UNITS, such as ch1=400V"
         )
-    return name.strip(), number
+    return name.strip(), (number, found[2] or "")

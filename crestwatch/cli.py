@@ -27,7 +27,7 @@ EXAMPLES = """\
 examples:
   crestwatch watch sim:hall                 look around, no hardware needed
   crestwatch watch /dev/ttyACM0             a logger on USB
-  crestwatch measure evening.wav --scale ch1=400 --scale ch2=50
+  crestwatch measure evening.wav --scale ch1=400V --scale ch2=50A
   crestwatch simulate workshop --on pty     a logger to connect to, in another terminal
   crestwatch COMMAND --help                 all there is to say of one command
 

@@ -242,7 +242,7 @@ class TableOutput:
             table.add_row(
                 Text(s.channel.name),
                 wording.quantity(s.rms.mean, unit),
-                f"{_figure(s.rms.low, 4)} … {_figure(s.rms.high, 4)}",
+                f"{s.rms.low:.6g} … {s.rms.high:.6g}",
                 _range(s.crest_factor, 1.0, 3),
                 _range(s.thd_f, 100.0, 2),
                 _range(s.averaging_error, 100.0, 2),

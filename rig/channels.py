@@ -64,10 +64,10 @@ def scale(said: ChannelSetup, hint: ChannelHint) -> tuple[float, float, str]:
     offset = said.offset_codes if said.offset_codes is not None else hint.offset_codes
     if said.gain is not None:
         unit, worth = si_unit(said.unit)
-        return said.gain * worth, offset, unit or COUNTS
+        return said.gain * worth, offset, unit
     if hint.gain is not None:
         unit, worth = si_unit(hint.unit)
-        return hint.gain * worth, offset, unit or si_unit(said.unit)[0] or COUNTS
+        return hint.gain * worth, offset, unit or si_unit(said.unit)[0]
     return 1.0, offset, COUNTS
 
 

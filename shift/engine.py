@@ -13,10 +13,10 @@ from acquisition.stream import StreamInfo
 from dsp.measure import measure
 from dsp.meters import MeterCard, show
 from dsp.power import PowerColumns, measure_pairs
-from dsp.reading import Readings
+from dsp.reading import Readings, comparable
 from dsp.verdict import Judge
 from dsp.waveform import Waveform
-from dsp.window import Flag, Windows
+from dsp.window import Windows
 from dsp.windowing import Windower
 from rig import channels as rig_channels
 from rig.scaling import Scaler
@@ -105,7 +105,7 @@ class Engine:
 
     def _batch(self, windows: Windows) -> Batch:
         readings = measure(windows, self.channels, self.nominal, self._anchor)
-        usable = (readings.flags & int(Flag.LOW_SIGNAL)) == 0
+        usable = comparable(readings)
         shown = []
         for card, judge in zip(self.cards, self._judges, strict=True):
             reading, error, u_error = show(card, windows, readings, self.channels)

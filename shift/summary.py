@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from dsp.reading import Readings
+from dsp.reading import Readings, comparable
 from dsp.verdict import JUDGEMENTS, Judgement
 from dsp.waveform import Channel
 
@@ -81,7 +81,9 @@ def with_run(
         rms=summary.rms.with_values(readings.rms[:, c]),
         crest_factor=summary.crest_factor.with_values(readings.crest_factor[:, c]),
         thd_f=summary.thd_f.with_values(readings.thd_f[:, c]),
-        averaging_error=summary.averaging_error.with_values(readings.averaging_error[:, c]),
+        averaging_error=summary.averaging_error.with_values(
+            readings.averaging_error[comparable(readings)[:, c], c]
+        ),
         windows=summary.windows + len(readings),
         windows_misleading=summary.windows_misleading + int(np.count_nonzero(misleading)),
         seconds_covered=summary.seconds_covered + float(readings.duration.sum()),

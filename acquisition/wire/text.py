@@ -324,6 +324,7 @@ def _canonical(whole: bytes, shape: TextShape) -> bytes:
     return re.sub(rb",[ \t]*\n", b"\n", text) if shape.trailing else text
 
 
+_BLANK_FIELD = re.compile(rb",[ \t]+(?:,|$)|^[ \t]+,")
 _TAB = bytes.maketrans(b"\t", b",")
 
 
@@ -354,8 +355,11 @@ def _fast(
 
 
 def _from_text(text: bytes, kind: type[np.number]) -> npt.NDArray[np.generic] | None:
+    joined = text.replace(b"\n", b",")
+    if (b" " in joined or b"\t" in joined) and _BLANK_FIELD.search(joined):
+        return None  # numpy reads a field of blanks as a number
     try:
-        return np.fromstring(text.replace(b"\n", b","), dtype=kind, sep=",")
+        return np.fromstring(joined, dtype=kind, sep=",")
     except ValueError:
         return None
 

@@ -13,7 +13,7 @@ from crestwatch import arguments, diagnostics
 EXAMPLES = """\
 examples:
   crestwatch measure evening.csv
-  crestwatch measure evening.wav --scale ch1=400 --scale ch2=50
+  crestwatch measure evening.wav --scale ch1=400V --scale ch2=50A
   crestwatch measure fault.cfg --json-lines | head
   crestwatch measure capture.bin --setup panel.toml --csv > panel.csv"""
 

@@ -22,7 +22,7 @@ examples:
   crestwatch watch sim:hall
   crestwatch watch /dev/ttyACM0 --setup panel.toml
   crestwatch watch tcp://127.0.0.1:5000 --json-lines --for 1min > minute.jsonl
-  crestwatch watch evening.wav --scale ch1=400 --speed 10"""
+  crestwatch watch evening.wav --scale ch1=400V --speed 10"""
 
 STREAM_EVERY = 10.0  # s between accounts of the stream
 

@@ -41,7 +41,7 @@ def identify(source: Source, length: float, baud: int | None) -> dict[str, objec
     """
     if isinstance(source, FileSource):
         if _is_recording(source.path):
-            opened = recording(source.path, None, None, None)
+            opened = recording(source.path)
             opened.close()
             return _told(opened.info, None, None)
         with source.path.open("rb") as file:

@@ -97,7 +97,7 @@ def open_measuring(
     path: Path,
     setup: Setup,
     rate: float | None,
-    scale: Mapping[str, float],
+    scale: Mapping[str, tuple[float, str]],
     format_: str | None,
 ) -> Measuring:
     """Open a recording to be measured.
@@ -106,4 +106,4 @@ def open_measuring(
         RecordingError: it is missing or is no recording of a known kind.
         SetupError: the setup names a channel that the recording lacks.
     """
-    return Measuring(recording(path, rate, scale, format_), setup, rate)
+    return Measuring(recording(path, rate or setup.rate_hz, scale, format_), setup, rate)

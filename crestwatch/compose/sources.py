@@ -37,16 +37,28 @@ def setup_for(path: Path | None, nominal: float | None, limit_pct: float | None)
 
 
 def recording(
-    path: Path, rate: float | None, scale: Mapping[str, float] | None, format_: str | None
+    path: Path,
+    rate: float | None = None,
+    scale: Mapping[str, tuple[float, str]] | None = None,
+    format_: str | None = None,
 ) -> Recording:
     """Open a recording.
 
+    Args:
+        scale: channel -> (units at full scale, the unit or "").
     Raises:
         RecordingError: it is missing or is no recording of a known kind.
     """
-    return open_recording(
-        path, RecordingOptions(rate=rate, scale=dict(scale or {}), format=format_)
-    )
+    scale = scale or {}
+    numbers = {name: number for name, (number, _) in scale.items()}
+    opened = open_recording(path, RecordingOptions(rate=rate, scale=numbers, format=format_))
+    units = {name: unit for name, (_, unit) in scale.items() if unit}
+    if units:
+        hints = tuple(
+            replace(hint, unit=units.get(hint.name, hint.unit)) for hint in opened.info.channels
+        )
+        opened.info = replace(opened.info, channels=hints)
+    return opened
 
 
 def opener(source: Source, setup: Setup, speed: float, baud: int | None) -> Callable[[], Link]:

@@ -88,7 +88,7 @@ def open_watch(
     *,
     setup_name: str = "",
     rate: float | None = None,
-    scale: Mapping[str, float] | None = None,
+    scale: Mapping[str, tuple[float, str]] | None = None,
     format_: str | None = None,
     speed: float = 1.0,
     baud: int | None = None,
@@ -101,7 +101,8 @@ def open_watch(
     """
     plan = plan_for(text, setup, rate, setup_name)
     if isinstance(source, FileSource):
-        return Watch(Replay(recording(source.path, rate, scale, format_), speed), plan)
+        opened = recording(source.path, rate or setup.rate_hz, scale, format_)
+        return Watch(Replay(opened, speed), plan)
     decoder = AutoDecoder(format_ or setup.format, rate=rate)
     reader = Reader(
         opener(source, setup, speed, baud), decoder, reconnect=not isinstance(source, SimSource)

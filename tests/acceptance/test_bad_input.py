@@ -153,7 +153,10 @@ def test_a_poor_signal_is_measured_and_marked(run, tmp_path, sentence):
         expected = float(np.sqrt(np.mean(samples**2)))
         assert windows[0]["rms"] == pytest.approx(expected, rel=0.06, abs=1e-12)
     else:
-        assert all(r["lock"] == "locked" for r in windows)
+        # A stretch of less than a cycle is measured over what there is, and judged by nobody.
+        scraps = [r for r in windows if r["lock"] != "locked"]
+        assert all("edge" in r["flags"] and r["verdict"] == "unsure" for r in scraps)
+        assert len(windows) - len(scraps) >= 8
     _is_talk(ran)
 
 

@@ -286,3 +286,13 @@ def test_hostile_bytes_never_raise(data):
 @given(st.lists(st.binary(max_size=30), max_size=30))
 def test_learning_never_raises(lines):
     learn([line.replace(b"\n", b"") for line in lines])
+
+
+@pytest.mark.parametrize("line", [b"512, \r\n", b"512,\t\r\n", b" ,512\r\n", b"512,\r\n"])
+def test_a_field_of_blanks_is_no_number(line):
+    """The lowest code sent is 480: numpy alone would read the blanks as 0 or -1."""
+    good = b"".join(b"%d,%d\r\n" % (500 + k % 20, 480 + k % 13) for k in range(600))
+    decoder = TextDecoder(1000.0)
+    blocks = decoder.feed(good + line + good, 0.0) + decoder.finish()
+    assert min(int(block.codes.min()) for block in blocks) == 480
+    assert decoder.tally.bad_frames == 1

@@ -22,7 +22,8 @@ def test_no_length_of_time(text: str) -> None:
 
 
 @pytest.mark.parametrize(
-    ("text", "expected"), [("ch1=400", ("ch1", 400.0)), ("way 3=12.5A", ("way 3", 12.5))]
+    ("text", "expected"),
+    [("ch1=400", ("ch1", (400.0, ""))), ("way 3=12.5A", ("way 3", (12.5, "A")))],
 )
 def test_scales(text: str, expected: tuple[str, float]) -> None:
     assert arguments.scale(text) == expected
