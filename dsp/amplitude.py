@@ -55,9 +55,7 @@ def measure_amplitudes(
     at = Ends(positions)
     mean_square = at.sums(x * x).reshape(c, w, parts) / widths
     mean = at.sums(x).reshape(c, w, parts).sum(2) / span
-    whole = Ends(np.concatenate((begins, ends[-1:])))
-    arv = _rectified(x, whole, np.zeros((c, 1)), 1) / span
-    arv_ac = _rectified(x, at, mean, parts).reshape(c, w, parts) / widths
+    rectified = _rectified(x, at, mean, parts).reshape(2, c, w, parts)
     low = np.ceil(begins).astype(np.int64)
     stop = max(int(np.ceil(ends[-1])), int(low[-1]) + 1)
     peak_max = np.maximum.reduceat(x[:, :stop], low, axis=1)
@@ -69,8 +67,8 @@ def measure_amplitudes(
     return Amplitudes(
         mean_square=mean_square,
         mean=mean,
-        arv=arv,
-        arv_ac=arv_ac,
+        arv=rectified[0].sum(2) / span,
+        arv_ac=rectified[1] / widths,
         peak_max=peak_max,
         peak_min=peak_min,
         jump_square=jump_square * share,
@@ -80,24 +78,23 @@ def measure_amplitudes(
 
 
 def _rectified(x: Floats, at: Ends, mean: Floats, parts: int) -> Floats:
-    """Integral of |x - mean| over every part; `mean` (c, windows), or (c, 1) for all."""
-    if mean.shape[1] == 1:
-        z = x - mean
-        shift = np.repeat(mean, len(at.whole), axis=1)
-    else:
-        lengths = np.diff(at.whole[::parts])
-        lengths[0] += at.whole[0]
-        lengths[-1] += x.shape[1] - at.whole[-1]
-        z = np.repeat(mean, lengths, axis=1)
-        np.subtract(x, z, out=z)
-        shift = np.concatenate((np.repeat(mean, parts, axis=1), mean[:, -1:]), axis=1)
-    size = np.abs(z)
-    inside = np.add.reduceat(size, at.inner, axis=1)[:, :-1]
+    """Integrals of |x|, then of |x - mean|, over every part: (2 c, parts); `mean` is (c, w)."""
+    c, n = x.shape
+    lengths = np.diff(at.whole[::parts])
+    lengths[0] += at.whole[0]
+    lengths[-1] += n - at.whole[-1]
+    z = np.empty((2 * c, n))
+    z[:c] = x
+    np.subtract(x, np.repeat(mean, lengths, axis=1), out=z[c:])
+    inside = np.add.reduceat(np.abs(z), at.inner, axis=1)[:, :-1]
     # The samples about an end belong to both windows, each with its own mean.
     taps = x[:, at.taps]
-    left = np.concatenate((shift[:, :1], shift[:, :-1]), axis=1)  # of the part that ends here
-    upper = at.partial(np.abs(taps - left[:, :, None]))
-    lower = at.partial(np.abs(taps - shift[:, :, None]))
+    shift = np.zeros((2 * c, len(at.whole) + 1))  # of the part that ends there; of the next
+    shift[c:, 1:-1] = np.repeat(mean, parts, axis=1)
+    shift[c:, [0, -1]] = mean[:, [0, -1]]
+    taps = np.concatenate((taps, taps))
+    upper = at.partial(np.abs(taps - shift[:, :-1, None]))
+    lower = at.partial(np.abs(taps - shift[:, 1:, None]))
     return np.asarray(inside + upper[:, 1:] - lower[:, :-1] - _kinks(z, at))
 
 

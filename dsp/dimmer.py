@@ -21,6 +21,7 @@ Phasors = npt.NDArray[np.complex128]
 LEAST, MOST = np.radians(12.0), np.radians(168.0)
 
 ORDERS = np.arange(3, 26, 2)
+_PLACES = slice(2, 25, 2)  # of those orders in an array that begins with order 1
 # How far a harmonic may be off, over the fundamental: the supply's own (the usual limits for low
 # voltage allow 5 % of the 3rd, 6 % of the 5th, 5 % of the 7th; from memory, not read), noise and
 # folding.
@@ -87,7 +88,7 @@ def firing_angle(lines: Phasors, nu: Floats, u_edge: Floats) -> tuple[Floats, Fl
         flat = lines.reshape(w * c, -1)
         reach = np.repeat(np.nan_to_num(nu), c)
         size = np.abs(flat[:, 0])
-        tail = flat[:, ORDERS[ORDERS >= 9] - 1]
+        tail = flat[:, 8 : ORDERS[-1] : 2]  # orders 9, 11, ...
         power = np.nansum(tail.real**2 + tail.imag**2, axis=1)
         tried = np.flatnonzero((power > _EDGE_POWER * size**2) & (size > 0.0))
         for at in range(0, len(tried), _ROWS):
@@ -100,7 +101,7 @@ def _fit(lines: Phasors, nu: Floats) -> tuple[Floats, Floats]:
     """Angles of rows of phasors (r, orders) that have a fundamental."""
     size = np.abs(lines[:, 0])
     back = lines[:, 0].conj() / size
-    found = lines[:, ORDERS - 1] / size[:, None] * back[:, None] ** ORDERS
+    found = lines[:, _PLACES] / size[:, None] * back[:, None] ** ORDERS
     top = np.minimum(np.maximum(_FOLDING / nu, _ALWAYS), 0.45 / nu)
     usable = (top[:, None] >= ORDERS) & np.isfinite(found.real)
     weight = usable / _SPREAD**2
@@ -111,12 +112,14 @@ def _fit(lines: Phasors, nu: Floats) -> tuple[Floats, Floats]:
     last = table.shape[1] - 2
     place = cell.astype(np.float64)
     for _ in range(3):  # Gauss-Newton: from 1.3 degrees off to under a thousandth
-        low = np.clip(place.astype(np.int64), 0, last)
-        slope = table[rise, low + 1] - table[rise, low]
-        rest = found - table[rise, low] - slope * (place - low)[:, None]
-        steep = (weight * np.abs(slope) ** 2).sum(1)
+        low = place.astype(np.int64)
+        here = table[rise, low]
+        slope = table[rise, low + 1] - here
+        rest = found - here - slope * (place - low)[:, None]
+        steep = (weight * (slope.real**2 + slope.imag**2)).sum(1)
         move = (weight * (rest * slope.conj()).real).sum(1) / steep
-        place = np.clip(place + np.clip(move, -_COARSE, _COARSE), 0.0, last)
+        move = np.minimum(np.maximum(move, -_COARSE), _COARSE)
+        place = np.minimum(np.maximum(place + move, 0.0), last)
     shape = found - rest
     left = (weight * np.abs(rest) ** 2).sum(1)
     whole = (weight * np.abs(shape) ** 2).sum(1)

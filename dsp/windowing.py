@@ -172,6 +172,9 @@ class Windower:
     def _locked(self) -> Windows | None:
         tracker = self._tracker
         assert tracker is not None
+        # A window's end lies 0.6 cycles early at most, and its phase 1.5 cycles behind the samples.
+        if self._stop < self._begin + (self._cycles + 0.5) / self._nu:
+            return None
         tracker.extend(self._buffer[self._reference], self._first)
         run = self._steady_run(tracker)
         if run is not None:
