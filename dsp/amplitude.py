@@ -12,13 +12,17 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from dsp.edges import Ends, spline_step
+from dsp.edges import REACH, Ends, spline_step
 
 Floats = npt.NDArray[np.float64]
 
 # A jump between two samples: this much of the peak-to-peak span at once, and this many times the
 # steps beside it. A sine at 27 samples a cycle moves 0.116 of its span in a step, but smoothly.
 JUMP_SHARE, JUMP_RATIO = 0.06, 3.0
+
+# A crossing this many samples before a window's end, or up to REACH behind it, and the samples
+# beside it see both windows' means.
+NEAR_LEFT = REACH + 1
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -42,7 +46,7 @@ def measure_amplitudes(
     """Sum all channels.
 
     Args:
-        x: samples (c, n), with MARGIN samples before the first and after the last end.
+        x: samples (c, n), with MARGIN + 1 samples before the first and after the last end.
         begins, ends: (w,) positions in samples from the start of `x`; windows touch.
         parts: equal parts to divide each window into.
         cyclic: whether the parts are cycles, in which an edge comes back at the same place.
@@ -78,29 +82,50 @@ def measure_amplitudes(
 
 
 def _rectified(x: Floats, at: Ends, mean: Floats, parts: int) -> Floats:
-    """Integrals of |x|, then of |x - mean|, over every part: (2 c, parts); `mean` is (c, w)."""
+    """Integrals of |x|, then of |x - mean|, over every part: (2 c, parts); `mean` is (c, w).
+
+    Samples about a window's end belong to both windows, each with its own mean.
+    """
     c, n = x.shape
-    lengths = np.diff(at.whole[::parts])
-    lengths[0] += at.whole[0]
-    lengths[-1] += n - at.whole[-1]
+    borders = at.inner[::parts]
+    lengths = np.diff(borders)
+    lengths[0] += borders[0]
+    lengths[-1] += n - borders[-1]
     z = np.empty((2 * c, n))
     z[:c] = x
     np.subtract(x, np.repeat(mean, lengths, axis=1), out=z[c:])
     inside = np.add.reduceat(np.abs(z), at.inner, axis=1)[:, :-1]
-    # The samples about an end belong to both windows, each with its own mean.
-    taps = x[:, at.taps]
-    shift = np.zeros((2 * c, len(at.whole) + 1))  # of the part that ends there; of the next
+    shift = np.zeros((2 * c, len(at.whole) + 1))  # mean left of an end, right of it
     shift[c:, 1:-1] = np.repeat(mean, parts, axis=1)
     shift[c:, [0, -1]] = mean[:, [0, -1]]
+    taps = x[:, at.taps]
     taps = np.concatenate((taps, taps))
-    upper = at.partial(np.abs(taps - shift[:, :-1, None]))
-    lower = at.partial(np.abs(taps - shift[:, 1:, None]))
-    return np.asarray(inside + upper[:, 1:] - lower[:, :-1] - _kinks(z, at))
+    inside += at.partial(np.abs(taps - shift[:, :-1, None]))[:, 1:]
+    inside -= at.partial(np.abs(taps - shift[:, 1:, None]))[:, :-1]
+    inside -= _kinks(z, at, parts)
+    left, right = _end_kinks(x, at, shift, parts)
+    inside[:, parts - 1 :: parts] -= left[:, 1:]
+    inside[:, ::parts] -= right[:, :-1]
+    return np.asarray(inside)
 
 
-def _kinks(z: Floats, at: Ends) -> Floats:
-    """What smooth zero crossings add too much, summed per part: (c, parts)."""
-    c, length = z.shape
+def _excess(before: Floats, a: Floats, b: Floats, after: Floats) -> tuple[Floats, Floats]:
+    """What a smooth crossing from a to b adds too much, and its place between them, 0..1.
+
+    0 where the wave is not smooth: of noise or an edge the samples do not tell the slope.
+    """
+    step = b - a
+    bend = np.maximum(np.abs(step - a + before), np.abs(step + b - after))
+    step = np.abs(step)
+    smooth = bend < 0.5 * step
+    share = np.abs(a) / np.where(smooth, step, 1.0)
+    excess = np.where(smooth, step * (share * (1.0 - share) - 1.0 / 6.0), 0.0)
+    return excess, share
+
+
+def _kinks(z: Floats, at: Ends, parts: int) -> Floats:
+    """What zero crossings add too much, summed per part, but for those at the windows' ends."""
+    rows, length = z.shape
     count = len(at.whole) - 1
     sign = (z >= 0.0).ravel()
     n = np.flatnonzero(sign[1:] != sign[:-1])
@@ -108,26 +133,47 @@ def _kinks(z: Floats, at: Ends) -> Floats:
     inner = (column >= 1) & (column + 2 < length)
     n, row, column = n[inner], row[inner], column[inner]
     flat = z.ravel()
-    a, b = flat[n], flat[n + 1]
-    step = b - a
-    bend = np.maximum(np.abs(step - a + flat[n - 1]), np.abs(step + b - flat[n + 2]))
-    smooth = np.flatnonzero(bend < 0.5 * np.abs(step))
-    row, column, a, step = row[smooth], column[smooth], a[smooth], np.abs(step[smooth])
-    share = np.abs(a) / step
-    excess = step * (share * (1.0 - share) - 1.0 / 6.0)
-    position = column + share
-    # An end sits on the fundamental's own crossing: what lies near it is shared as the ends
+    excess, share = _excess(flat[n - 1], flat[n], flat[n + 1], flat[n + 2])
+    smooth = np.flatnonzero(excess)
+    excess, row, column, share = excess[smooth], row[smooth], column[smooth], share[smooth]
+    # A cycle begins on the fundamental's own crossing: what lies near it is shared as its ends
     # share the samples.
     ends = at.positions
+    position = column + share
     part = np.searchsorted(ends, position, side="right") - 1
     part = np.minimum(np.maximum(part, 0), count - 1)
     nearest = part + (position - ends[part] > ends[part + 1] - position)
     below = spline_step(ends[nearest] - position)
+    past = column - at.whole[nearest]
+    excess[(nearest % parts == 0) & (past >= -NEAR_LEFT) & (past <= REACH)] = 0.0
     # One column more on either side takes what lies outside the windows.
     key = row * (count + 2) + nearest
-    shares = np.bincount(key, excess * below, c * (count + 2))
-    shares += np.bincount(key + 1, excess * (1.0 - below), c * (count + 2))
-    return np.asarray(shares.reshape(c, count + 2)[:, 1:-1])
+    shares = np.bincount(key, excess * below, rows * (count + 2))
+    shares += np.bincount(key + 1, excess * (1.0 - below), rows * (count + 2))
+    return np.asarray(shares.reshape(rows, count + 2)[:, 1:-1])
+
+
+def _end_kinks(x: Floats, at: Ends, shift: Floats, parts: int) -> tuple[Floats, Floats]:
+    """The same of crossings at windows' ends: for the window before, for the one after.
+
+    Each counts them about its own mean, so that it does not matter which windows come together.
+    """
+    whole = at.whole[::parts]
+    near = np.arange(-NEAR_LEFT - 1, REACH + 3)
+    samples = x[:, whole[:, None] + near]
+    samples = np.concatenate((samples, samples))
+    end = (at.positions[::parts] - whole)[:, None] - near[1:-2]
+    sums: list[Floats] = []
+    for side in (shift[:, :-1:parts], shift[:, 1::parts]):
+        z = samples - side[:, :, None]
+        before, a, b, after = z[..., :-3], z[..., 1:-2], z[..., 2:-1], z[..., 3:]
+        excess, share = _excess(before, a, b, after)
+        excess *= (a >= 0.0) != (b >= 0.0)
+        below = spline_step(end - share)
+        if sums:
+            below = 1.0 - below
+        sums.append((excess * below).sum(2))
+    return sums[0], sums[1]
 
 
 def _shared(cycle: Floats, count: int) -> Floats:

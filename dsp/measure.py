@@ -47,9 +47,9 @@ def measure(
         nominal: mains frequency [Hz], when known.
         time0: a set index and its time [s]; windows are placed from there.
     """
-    pad_left = max(0, MARGIN - (int(np.floor(windows.begins[0])) - windows.first))
+    pad_left = max(0, MARGIN + 1 - (int(np.floor(windows.begins[0])) - windows.first))
     reach = windows.first + windows.samples.shape[1]
-    pad_right = max(0, MARGIN + 1 - (reach - int(np.floor(windows.ends[-1]))))
+    pad_right = max(0, MARGIN + 2 - (reach - int(np.floor(windows.ends[-1]))))
     samples = windows.samples
     if pad_left or pad_right:  # only at the very ends of the data
         samples = np.pad(samples, ((0, 0), (pad_left, pad_right)), mode="edge")
@@ -120,8 +120,8 @@ def _by_blocks(
     blocks = []
     for at in range(0, len(begins), each):
         part = slice(at, at + each)
-        low = int(begins[at]) - MARGIN
-        high = int(ends[part][-1]) + MARGIN + 2
+        low = int(begins[at]) - MARGIN - 1
+        high = int(ends[part][-1]) + MARGIN + 3
         blocks.append(
             measure_amplitudes(
                 samples[:, low:high], begins[part] - low, ends[part] - low, parts, cyclic
