@@ -109,18 +109,20 @@ def _rectified(x: Floats, at: Ends, mean: Floats, parts: int) -> Floats:
     return np.asarray(inside)
 
 
-def _excess(before: Floats, a: Floats, b: Floats, after: Floats) -> tuple[Floats, Floats]:
-    """What a smooth crossing from a to b adds too much, and its place between them, 0..1.
-
-    0 where the wave is not smooth: of noise or an edge the samples do not tell the slope.
+def _smooth(before: Floats, a: Floats, b: Floats, after: Floats) -> npt.NDArray[np.bool_]:
+    """Whether a crossing from a to b is nearly straight: of noise or an edge the samples do not
+    tell the slope.
     """
     step = b - a
     bend = np.maximum(np.abs(step - a + before), np.abs(step + b - after))
-    step = np.abs(step)
-    smooth = bend < 0.5 * step
-    share = np.abs(a) / np.where(smooth, step, 1.0)
-    excess = np.where(smooth, step * (share * (1.0 - share) - 1.0 / 6.0), 0.0)
-    return excess, share
+    return np.asarray(bend < 0.5 * np.abs(step))
+
+
+def _excess(a: Floats, b: Floats) -> tuple[Floats, Floats]:
+    """What a smooth crossing from a to b adds too much, and its place between them, 0..1."""
+    step = np.abs(b - a)
+    share = np.abs(a) / step
+    return step * (share * (1.0 - share) - 1.0 / 6.0), share
 
 
 def _kinks(z: Floats, at: Ends, parts: int) -> Floats:
@@ -133,9 +135,9 @@ def _kinks(z: Floats, at: Ends, parts: int) -> Floats:
     inner = (column >= 1) & (column + 2 < length)
     n, row, column = n[inner], row[inner], column[inner]
     flat = z.ravel()
-    excess, share = _excess(flat[n - 1], flat[n], flat[n + 1], flat[n + 2])
-    smooth = np.flatnonzero(excess)
-    excess, row, column, share = excess[smooth], row[smooth], column[smooth], share[smooth]
+    kept = np.flatnonzero(_smooth(flat[n - 1], flat[n], flat[n + 1], flat[n + 2]))
+    n, row, column = n[kept], row[kept], column[kept]
+    excess, share = _excess(flat[n], flat[n + 1])
     # A cycle begins on the fundamental's own crossing: what lies near it is shared as its ends
     # share the samples.
     ends = at.positions
@@ -167,8 +169,9 @@ def _end_kinks(x: Floats, at: Ends, shift: Floats, parts: int) -> tuple[Floats, 
     for side in (shift[:, :-1:parts], shift[:, 1::parts]):
         z = samples - side[:, :, None]
         before, a, b, after = z[..., :-3], z[..., 1:-2], z[..., 2:-1], z[..., 3:]
-        excess, share = _excess(before, a, b, after)
-        excess *= (a >= 0.0) != (b >= 0.0)
+        counts = _smooth(before, a, b, after) & ((a >= 0.0) != (b >= 0.0))
+        excess, share = _excess(np.where(counts, a, 0.0), np.where(counts, b, 1.0))
+        excess = np.where(counts, excess, 0.0)
         below = spline_step(end - share)
         if sums:
             below = 1.0 - below
