@@ -1,6 +1,7 @@
 """`make bench`: every figure, or those of the parts named: `python -m bench accuracy speed`."""
 
 import importlib
+import os
 import sys
 
 PARTS = ("accuracy", "speed", "start", "stall")
@@ -8,6 +9,8 @@ PARTS = ("accuracy", "speed", "start", "stall")
 
 def main() -> int:
     """Run the parts; 1 when a goal was missed."""
+    for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"):  # as the command does
+        os.environ.setdefault(name, "1")
     names = sys.argv[1:] or list(PARTS)
     unknown = [name for name in names if name not in PARTS]
     if unknown:

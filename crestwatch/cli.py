@@ -41,6 +41,10 @@ def main(argv: Sequence[str] | None = None) -> int:
         0 done; 1 a check failed; 2 wrong usage; 3 source not available; 4 data unreadable;
         5 could not write; 130 interrupted.
     """
+    # Products here are small: more threads only spin, for twice the CPU and not a moment sooner.
+    # numpy's libraries read this when they load, and a person's own choice stands.
+    for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"):
+        os.environ.setdefault(name, "1")
     arguments = list(sys.argv[1:] if argv is None else argv)
     parser = build_parser(only=_named(arguments))
     options = parser.parse_args(arguments)

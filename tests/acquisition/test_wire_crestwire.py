@@ -347,3 +347,15 @@ def test_refuses_to_encode_what_does_not_fit():
         encode_data(np.zeros((2, 600)), boot=0, sequence=0, index=0, tick=0)
     with pytest.raises(ValueError, match="1 to 32"):
         encode_data(np.zeros((33, 1)), boot=0, sequence=0, index=0, tick=0)
+
+
+def test_the_frame_on_the_formats_page_is_what_it_says():
+    import re
+    from pathlib import Path
+
+    page = Path(__file__).resolve().parents[2] / "docs" / "crestwire.md"
+    hexes = re.search(r"```\n((?:[0-9a-f]{2}\s+)+)```", page.read_text(encoding="utf-8"))
+    assert hexes is not None
+    decoder, blocks = decode([bytes.fromhex(hexes[1])])
+    assert decoder.tally.bad_frames == 0
+    assert joined(blocks).tolist() == [[2048, 2100, 0], [2048, 1996, 4095]]
