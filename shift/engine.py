@@ -74,6 +74,14 @@ class Engine:
             batches += self._measure_all(waveform)
         return batches
 
+    def stream_stops(self, words: str) -> Batch:
+        """The source is gone or silent: an event, once."""
+        return self._only_events(self._happenings.stream_stops(self.seconds, words))
+
+    def stream_returns(self, seconds: float) -> Batch:
+        """It is back after `seconds`: the event ends."""
+        return self._only_events(self._happenings.stream_returns(seconds))
+
     def finish(self) -> list[Batch]:
         """Measure what is left at the end of the stream and close open events."""
         batches = [self._batch(windows) for windows in self._windower.flush()]

@@ -44,6 +44,7 @@ class Happenings:
         self._misleading: list[_Open | None] = [None] * len(self._channels)
         self._clipped: list[_Open | None] = [None] * len(self._channels)
         self._gap: _Open | None = None
+        self._stopped: _Open | None = None
         self._seen = 0.0  # end of the last window looked at [s]
 
     def windows(
@@ -93,6 +94,21 @@ class Happenings:
         if self._gap is None or now - self._gap.end < GAP_QUIET:
             return ()
         return self._close_gap()
+
+    def stream_stops(self, now: float, words: str) -> tuple[Event, ...]:
+        """The source is gone or silent; `now` on the sample clock, which stands still meanwhile."""
+        if self._stopped is not None:
+            return ()
+        self._stopped = self._begin("stream", None, now, 0.0)
+        return (self._tell(self._stopped, Phase.BEGINS, None, None, "s", words),)
+
+    def stream_returns(self, seconds: float) -> tuple[Event, ...]:
+        """It is back after `seconds` of the host's clock."""
+        opened, self._stopped = self._stopped, None
+        if opened is None:
+            return ()
+        words = wording.stream_returns(seconds)
+        return (self._tell(opened, Phase.ENDS, seconds, seconds, "s", words),)
 
     def finish(self, now: float) -> tuple[Event, ...]:
         """Close everything at the end of the stream."""

@@ -73,6 +73,7 @@ class Live:
         self._waiting: list[Block] = []  # until the rate is known
         self._first_block: float | None = None
         self._stopping = False
+        self._stopped: float | None = None  # when the source went quiet, host's clock
         self._thread: threading.Thread | None = None
         self._trends: list[deque[tuple[float, float]]] = []
         self._views: tuple[ChannelView, ...] = ()
@@ -123,6 +124,7 @@ class Live:
         while not self._stopping and not until():
             status = self._blocks.status
             fresh = self._blocks.take(TAKE_WAIT)
+            yield from self._notice(status)
             yield from self._absorb(fresh, status)
             self._publish()
             if not fresh and status.state in (LinkState.FINISHED, LinkState.FAILED):
@@ -150,6 +152,21 @@ class Live:
             )
         if on_end is not None:
             on_end()
+
+    def _notice(self, status: ReaderStatus) -> Iterator[Batch]:
+        """A source that stops, and one that comes back, are events."""
+        if self._engine is None:
+            return
+        batch: Batch | None = None
+        if status.state in (LinkState.GONE, LinkState.QUIET) and self._stopped is None:
+            self._stopped = time.monotonic()
+            batch = self._engine.stream_stops(self._stage(status)[1])
+        elif status.state is LinkState.LIVE and self._stopped is not None:
+            batch = self._engine.stream_returns(time.monotonic() - self._stopped)
+            self._stopped = None
+        if batch is not None:
+            self._remember(batch)
+            yield batch
 
     def _absorb(self, fresh: Sequence[Block], status: ReaderStatus) -> Iterator[Batch]:
         if self._engine is None:

@@ -124,6 +124,11 @@ def clipped_ends(channel: Channel, seconds: float) -> str:
     return f"{channel.name}: was clipped for {duration(seconds)}."
 
 
+def stream_returns(seconds: float) -> str:
+    """Sentence for a source that is back."""
+    return f"The source is back after {duration(seconds)}; the watch goes on."
+
+
 def gap(lost: int | None, seconds: float | None) -> str:
     """Sentence for missing samples. `lost` sets; None where the format cannot tell."""
     if lost is None or seconds is None:

@@ -247,3 +247,28 @@ def test_records_hold_no_figure_that_does_not_exist():
     assert record["flags"] == ["low-signal", "unlocked"]
     record = stream_record(ReaderStatus(tally=Tally(10, None)), 1.0)
     assert record["lost_samples"] is None
+
+
+def test_a_source_that_goes_and_comes_back_is_one_event():
+    wave = _wave(2.0)
+
+    class Broken(_Source):
+        """Gone for a few looks in the middle."""
+
+        looks = 0
+
+        def take(self, timeout):
+            self.looks += 1
+            gone = 6 <= self.looks < 9
+            self.status = ReaderStatus(
+                LinkState.GONE if gone else LinkState.LIVE, "wire", INFO, Tally(), None, 100
+            )
+            return [] if gone else super().take(timeout)
+
+    blocks = [Block(wave[:, k : k + 1600].copy(), k) for k in range(0, 16000, 1600)]
+    live = Live(Broken(blocks, INFO), WatchPlan("x", Setup.empty(), BUILT_IN))
+    events = [e for e in _events(live.batches()) if e.kind == "stream"]
+    assert [e.phase for e in events] == [Phase.BEGINS, Phase.ENDS]
+    assert "looking for it" in events[0].words
+    assert "back after" in events[1].words
+    assert 0.9 < events[0].start < 1.3
