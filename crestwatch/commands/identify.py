@@ -5,7 +5,7 @@ import json
 import sys
 
 from crestwatch import arguments, diagnostics
-from crestwatch.source import GRAMMAR, parse_source
+from crestwatch.source import GRAMMAR, FileSource, parse_source
 
 EXAMPLES = f"""\
 {GRAMMAR}
@@ -36,6 +36,8 @@ def run(options: argparse.Namespace) -> int:
     from crestwatch.compose import finding
 
     source = parse_source(options.source)
+    if sys.stderr.isatty() and not isinstance(source, FileSource):
+        diagnostics.note(f"listening to {options.source} for up to {options.length:g} s")
     found = finding.identify(source, options.length, options.baud)
     if options.json:
         sys.stdout.write(json.dumps(found, ensure_ascii=False, allow_nan=False) + "\n")

@@ -24,6 +24,7 @@ examples:
   crestwatch watch tcp://127.0.0.1:5000 --json-lines --for 1min > minute.jsonl
   crestwatch watch evening.wav --scale ch1=400V --speed 10"""
 
+WAIT_UNTOLD = 1.0  # s of waiting before it is said what for
 STREAM_EVERY = 10.0  # s between accounts of the stream
 
 
@@ -98,10 +99,10 @@ def _print(watch: "Watch", options: argparse.Namespace) -> int:
     began = time.monotonic()
     told = began
     introduced = False
-    remarked = ""
+    remarked = waiting = ""
 
     def over() -> bool:
-        nonlocal told, remarked
+        nonlocal told, remarked, waiting
         now = time.monotonic()
         if introduced and now - told >= STREAM_EVERY:
             told = now
@@ -110,6 +111,10 @@ def _print(watch: "Watch", options: argparse.Namespace) -> int:
         if problem and problem != remarked:
             diagnostics.note(problem)
         remarked = problem
+        words = live.snapshot.words
+        if not introduced and words != waiting and now - began > WAIT_UNTOLD:
+            diagnostics.note(words)
+            waiting = words
         if options.length is None:
             return False
         return bool(now - began >= options.length or live.snapshot.seconds >= options.length)
