@@ -2,6 +2,7 @@
 
 import argparse
 import importlib
+import io
 import os
 import sys
 from collections.abc import Sequence
@@ -45,6 +46,10 @@ def main(argv: Sequence[str] | None = None) -> int:
     # numpy's libraries read this when they load, and a person's own choice stands.
     for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS"):
         os.environ.setdefault(name, "1")
+    for stream in (sys.stdout, sys.stderr):
+        # A terminal that knows no "…" or "°" gets a question mark, never an exception.
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")
     arguments = list(sys.argv[1:] if argv is None else argv)
     parser = build_parser(only=_named(arguments))
     options = parser.parse_args(arguments)

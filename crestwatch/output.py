@@ -5,6 +5,7 @@ words for the person go to stderr elsewhere.
 """
 
 import csv
+import io
 import json
 import sys
 from collections.abc import Sequence
@@ -61,11 +62,18 @@ class Output(Protocol):
         ...
 
 
+def as_data(out: TextIO) -> TextIO:
+    """A stream for other programs: UTF-8 and the line ends that are written, on any system."""
+    if isinstance(out, io.TextIOWrapper):
+        out.reconfigure(encoding="utf-8", newline="")
+    return out
+
+
 class JsonLinesOutput:
     """One record a line."""
 
     def __init__(self, out: TextIO) -> None:
-        self._out = out
+        self._out = as_data(out)
 
     def begin(self, source: Described) -> None:
         """The source record."""
@@ -113,8 +121,8 @@ class CsvOutput:
     """One row per channel per window, point decimals, a header line."""
 
     def __init__(self, out: TextIO) -> None:
-        self._writer = csv.writer(out, lineterminator="\r\n")
-        self._out = out
+        self._out = as_data(out)
+        self._writer = csv.writer(self._out, lineterminator="\r\n")
 
     def begin(self, source: Described) -> None:
         """The header."""
@@ -217,6 +225,7 @@ class TableOutput:
 
     def end(self, summaries: Sequence[Summary], status: ReaderStatus, seconds: float) -> None:
         """Print the page."""
+        from rich.box import SIMPLE_HEAD
         from rich.console import Console
         from rich.table import Table
         from rich.text import Text
@@ -231,24 +240,26 @@ class TableOutput:
                 f"{seconds:.3f} s"
             )
         )
-        table = Table(title=None, header_style="bold")
-        for heading in ("channel", "true RMS", "least … most", "crest factor", "THD-F %"):
-            table.add_column(heading, justify="left" if heading == "channel" else "right")
-        table.add_column("averaging meter off by %", justify="right")
-        table.add_column("windows", justify="right")
-        table.add_column("misleading", justify="right")
+        wide = console.width >= 100
+        table = Table(box=SIMPLE_HEAD, header_style="bold", pad_edge=False)
+        table.add_column("channel")
+        headings = ["true RMS", "crest factor", "THD-F %", "averaging off %", "misled"]
+        if wide:
+            headings = [*headings[:1], "least … most", *headings[1:], "windows"]
+        for heading in headings:
+            table.add_column(heading, justify="right", no_wrap=True)
         for s in summaries:
-            unit = s.channel.unit
-            table.add_row(
-                Text(s.channel.name),
-                wording.quantity(s.rms.mean, unit),
-                f"{s.rms.low:.6g} … {s.rms.high:.6g}",
+            cells = [
+                wording.quantity(s.rms.mean, s.channel.unit),
                 _range(s.crest_factor, 1.0, 3),
                 _range(s.thd_f, 100.0, 2),
                 _range(s.averaging_error, 100.0, 2),
-                str(s.windows),
                 str(s.windows_misleading),
-            )
+            ]
+            if wide:
+                spread = f"{s.rms.low:.6g} … {s.rms.high:.6g}"
+                cells = [*cells[:1], spread, *cells[1:], str(s.windows)]
+            table.add_row(Text(s.channel.name), *cells)
         console.print(table)
         for summary in summaries:
             console.print(Text(_summary_sentence(summary)), soft_wrap=True)

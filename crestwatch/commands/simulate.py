@@ -35,6 +35,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("--bits", type=int, choices=range(8, 17), default=12, metavar="8…16")
     parser.add_argument("--noise", metavar="CODES", type=float, default=0.5, help="RMS noise")
     parser.add_argument("--ppm", type=float, default=0.0, help="clock error, parts per million")
+    parser.add_argument("--drift", type=float, default=0.0, help="slow swing of the clock, ppm")
     parser.add_argument("--faults", metavar="LIST", default="", help="such as drop=1e-4,reboot=30s")
     parser.add_argument("--seed", type=int, default=1, help="another seed, other noise and faults")
     parser.add_argument("--speed", metavar="TIMES", type=arguments.positive, default=1.0)
@@ -63,6 +64,7 @@ def run(options: argparse.Namespace) -> int:
         bits=options.bits,
         noise=options.noise,
         ppm=options.ppm,
+        drift=options.drift,
         seed=options.seed,
         faults=options.faults,
     )

@@ -17,7 +17,7 @@ class Ran:
 
     def __init__(self, code: int, out: bytes, err: bytes) -> None:
         self.code, self.out_bytes, self.err_bytes = code, out, err
-        self.out, self.err = out.decode(), err.decode()
+        self.out, self.err = out.decode(errors="replace"), err.decode(errors="replace")
 
     def records(self, kind: str | None = None) -> list[dict]:
         def refuse(text: str) -> None:

@@ -231,3 +231,15 @@ def test_completion_names_every_command(run, shell):
     script = run("completion", shell).out
     for command in ("watch", "measure", "simulate", "identify", "ports"):
         assert command in script
+
+
+@pytest.mark.parametrize("encoding", ["ascii", "latin-1"])
+def test_an_old_encoding_is_no_exception(run, tmp_path, cut_wave, encoding):
+    path = tmp_path / "wave.npz"
+    np.savez(path, samples=cut_wave, rate=8000.0, names=["Büro", "Ω"], units=["V", "A"])
+    for form in ((), ("--windows",)):
+        ran = run("measure", str(path), *form, PYTHONIOENCODING=encoding)
+        assert ran.code == 0
+        assert ran.err == ""
+    ran = run("measure", str(path), "--json-lines", PYTHONIOENCODING=encoding)
+    assert ran.records("source")[0]["channels"][0]["name"] == "Büro"  # records are UTF-8, always
