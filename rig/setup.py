@@ -45,6 +45,7 @@ class Setup:
     site: str = ""
     nominal_hz: float | None = None
     limit: float = DEFAULT_LIMIT  # verdict limit, fraction
+    declared_v: float | None = None  # what dips and swells are judged against; None: it slides
     reference: str | None = None  # channel whose cycles cut the windows
     channels: tuple[ChannelSetup, ...] = ()
     pairs: tuple[tuple[str, str], ...] = ()  # (voltage, current) names
@@ -84,8 +85,8 @@ class _Reader:
         self._where = where
 
     def setup(self, table: Table) -> Setup:
-        self._known(table, ("site", "nominal_hz", "limit_pct", "reference", "logger", "channel",
-                            "pair"), 0)  # fmt: skip
+        self._known(table, ("site", "nominal_hz", "limit_pct", "declared_v", "reference", "logger",
+                            "channel", "pair"), 0)  # fmt: skip
         logger = self._table(table, "logger")
         at = self._line("[logger]")
         self._known(logger, ("format", "baud", "rate_hz"), at or 0)
@@ -114,6 +115,7 @@ class _Reader:
             where=self._where,
             site=self._text(table, "site") or "",
             nominal_hz=self._number(table, "nominal_hz", 40.0, 70.0),
+            declared_v=self._number(table, "declared_v", 0.1, 1e6),
             limit=DEFAULT_LIMIT if limit is None else limit / 100.0,
             reference=self._text(table, "reference"),
             channels=channels,

@@ -10,12 +10,13 @@ import numpy as np
 
 from acquisition.block import Block
 from acquisition.stream import StreamInfo
+from dsp.halfcycle import half_cycle_squares
 from dsp.measure import measure
 from dsp.meters import MeterCard, show
 from dsp.power import PowerColumns, measure_pairs
 from dsp.reading import Readings, comparable
 from dsp.verdict import Judge
-from dsp.waveform import Waveform
+from dsp.waveform import Kind, Waveform
 from dsp.window import Windows
 from dsp.windowing import Windower
 from rig import channels as rig_channels
@@ -24,6 +25,7 @@ from rig.setup import Setup
 from shift.batch import Batch, Shown
 from shift.event import Event
 from shift.happenings import Happenings
+from shift.voltage import Watcher
 
 
 class Engine:
@@ -46,6 +48,13 @@ class Engine:
         )
         self._judges = tuple(Judge(self.limit) for _ in self.cards)
         self._happenings = Happenings(self.channels)
+        # Only the supply: a dimmed way leaves any band at every cue.
+        supply = rig_channels.reference(setup, self.channels)
+        self._voltages = (
+            {supply: Watcher(setup.declared_v)}
+            if self.channels[supply].kind is Kind.VOLTAGE
+            else {}
+        )
         self._energy = np.zeros(len(self.pair_indices))
         self._anchor = (0, 0.0)  # a set index and its time, moved when the rate is corrected
         self._rate = 0.0
@@ -85,7 +94,10 @@ class Engine:
     def finish(self) -> list[Batch]:
         """Measure what is left at the end of the stream and close open events."""
         batches = [self._batch(windows) for windows in self._windower.flush()]
-        events = self._happenings.finish(self.seconds)
+        events: tuple[Event, ...] = ()
+        for k, watcher in self._voltages.items():
+            events += self._happenings.voltage(self.channels[k], watcher.finish(self.seconds))
+        events += self._happenings.finish(self.seconds)
         if events:
             batches.append(self._only_events(events))
         return batches
@@ -103,6 +115,8 @@ class Engine:
     def _happenings_before(self, waveform: Waveform) -> tuple[Event, ...]:
         if not waveform.gap_before:
             return ()
+        for watcher in self._voltages.values():
+            watcher.gap()
         lost = waveform.lost_before
         begun = waveform.start - (lost or 0)
         if lost:
@@ -125,7 +139,21 @@ class Engine:
         if len(energy):
             self._energy = energy[-1].copy()
         events = self._happenings.windows(readings, shown[0].error, shown[0].codes)
+        events += self._voltage_events(windows, readings)
         return Batch(self.channels, windows, readings, tuple(shown), powers, energy, events)
+
+    def _voltage_events(self, windows: Windows, readings: Readings) -> tuple[Event, ...]:
+        events: tuple[Event, ...] = ()
+        for k, watcher in self._voltages.items():
+            if windows.cycles[0]:
+                ends, squares = half_cycle_squares(windows, k)
+                times = self._anchor[1] + (ends - self._anchor[0]) / self._rate
+                told = watcher.half_cycles(times, squares, float(readings.rms[-1, k]))
+            else:
+                # No cycles to halve: the windows' own RMS says whether the voltage is back.
+                told = watcher.values(readings.start + readings.duration, readings.rms[:, k])
+            events += self._happenings.voltage(self.channels[k], told)
+        return events
 
     def _only_events(self, events: tuple[Event, ...]) -> Batch:
         """A Batch of no windows that carries events."""

@@ -17,6 +17,7 @@ from dsp.waveform import Channel
 from dsp.window import Flag
 from shift import wording
 from shift.event import Event, Phase
+from shift.voltage import Excursion
 
 # A gap event ends once this long has passed without another; long enough to join the stutter of
 # one bad contact, short enough to be told while it matters.
@@ -43,6 +44,7 @@ class Happenings:
         self._count = 0
         self._misleading: list[_Open | None] = [None] * len(self._channels)
         self._clipped: list[_Open | None] = [None] * len(self._channels)
+        self._excursions: dict[str, _Open] = {}
         self._gap: _Open | None = None
         self._stopped: _Open | None = None
         self._seen = 0.0  # end of the last window looked at [s]
@@ -70,6 +72,29 @@ class Happenings:
             events += self._clips(c, channel, readings, clipped[:, c])
         self._seen = float(readings.start[-1] + readings.duration[-1])
         return tuple(sorted(events, key=_when))
+
+    def voltage(self, channel: Channel, told: Sequence[Excursion]) -> tuple[Event, ...]:
+        """What a voltage's watcher tells, as events."""
+        events = []
+        for excursion in told:
+            if excursion.end is None:
+                opened = self._begin(excursion.name, channel.name, excursion.start, 0.0)
+                self._excursions[channel.name] = opened
+                words = wording.excursion_begins(channel, excursion.name, excursion.worst)
+                events.append(
+                    self._tell(opened, Phase.BEGINS, None, excursion.worst, channel.unit, words)
+                )
+                continue
+            opened = self._excursions.pop(channel.name)
+            seconds = excursion.end - excursion.start
+            share = excursion.worst / excursion.reference
+            words = wording.excursion_ends(channel, excursion.name, excursion.worst, share, seconds)
+            # A dip that fell to nothing ends as the interruption that it became.
+            opened = replace(opened, kind=excursion.name)
+            events.append(
+                self._tell(opened, Phase.ENDS, seconds, excursion.worst, channel.unit, words)
+            )
+        return tuple(events)
 
     def gap(self, start: float, lost: int | None, seconds: float | None) -> tuple[Event, ...]:
         """Samples are missing: `lost` sets from `start` on (None: the format cannot tell)."""

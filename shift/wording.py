@@ -124,6 +124,23 @@ def clipped_ends(channel: Channel, seconds: float) -> str:
     return f"{channel.name}: was clipped for {duration(seconds)}."
 
 
+_WORDS = {"dip": "dips", "swell": "swells", "interruption": "is interrupted"}
+
+
+def excursion_begins(channel: Channel, kind: str, value: float) -> str:
+    """Sentence for a voltage that leaves its band."""
+    return f"{channel.name} {_WORDS[kind]}: {quantity(value, channel.unit)} over one cycle."
+
+
+def excursion_ends(channel: Channel, kind: str, worst: float, share: float, seconds: float) -> str:
+    """Sentence for its return; `share` of the reference is what was left, or reached."""
+    value = quantity(worst, channel.unit)
+    what = "at most" if kind == "swell" else "down to"
+    noun = "an interruption" if kind == "interruption" else f"a {kind}"
+    left = f"{what} {value} ({100.0 * share:.1f} %)"
+    return f"{channel.name} is back: {noun} of {duration(seconds)}, {left}."
+
+
 def stream_returns(seconds: float) -> str:
     """Sentence for a source that is back."""
     return f"The source is back after {duration(seconds)}; the watch goes on."
