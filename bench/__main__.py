@@ -4,7 +4,7 @@ import importlib
 import os
 import sys
 
-PARTS = ("accuracy", "speed", "start", "stall")
+PARTS = ("accuracy", "speed", "start", "screen", "stall")
 
 
 def main() -> int:

@@ -97,17 +97,10 @@ def row_of(value: float, low: float, high: float, height: int) -> int | None:
 
 def bars(fractions: Floats, height: int, glyphs: str) -> list[str]:
     """Upright bars, one a column; 1.0 fills the height."""
-    eighths = " ▁▂▃▄▅▆▇█"
-    lines = []
-    for y in range(height):
-        floor = height - 1 - y
-        row = ""
-        for fraction in fractions:
-            part = float(np.clip(np.nan_to_num(fraction) * height - floor, 0.0, 1.0))
-            if glyphs == "ascii":
-                row += "#" if part >= 0.5 else " "
-            else:
-                part = max(part, 0.125) if floor == 0 and fraction > 0.0 else part
-                row += eighths[round(part * 8)]
-        lines.append(row)
-    return lines
+    ink = np.array(list("    #####" if glyphs == "ascii" else " ▁▂▃▄▅▆▇█"))
+    fractions = np.nan_to_num(np.asarray(fractions, float))
+    floors = np.arange(height - 1, -1, -1)[:, None]
+    parts = np.clip(fractions * height - floors, 0.0, 1.0)
+    if glyphs != "ascii":  # the least of a share still shows
+        parts[-1] = np.where(fractions > 0.0, np.maximum(parts[-1], 0.125), 0.0)
+    return ["".join(row) for row in ink[np.rint(parts * 8).astype(int)].tolist()]

@@ -159,7 +159,7 @@ def _trend(channel: ChannelView, view: View, width: int, height: int) -> list[Li
     right = 16
     plot_width = max(10, width - right - 4)
     dots = trace_dots(trend.values, low, high, plot_width, height, view.glyphs)
-    rows = ["".join(row) for row in characters(dots, view.glyphs)]
+    rows = ["".join(row) for row in characters(dots, view.glyphs).tolist()]
     notes = [""] * height
     notes[0] = wording.quantity(high, unit, (high - low) / 200.0)
     if height > 1:

@@ -5,6 +5,7 @@ meter would show, and the peaks drawn on it as levels; below it the harmonics.
 """
 
 import math
+import re
 
 import numpy as np
 
@@ -19,6 +20,7 @@ KEYS = [("1", "Now"), ("2", "Wave"), ("←→", "channel"), ("+-", "cycles"), ("
         ("?", "help"), ("q", "leave")]  # fmt: skip
 AXIS = 9  # cells of the scale on the left
 LABELS = 30  # cells of the level names on the right
+_RUNS = re.compile(" +|[^ ]+")
 TWO_TRACES_FROM = 46  # rows of terminal
 
 
@@ -79,7 +81,7 @@ def _trace(
     if cycles:
         length *= min(view.cycles, cycles) / cycles
     n = window.samples.shape[1]
-    at = np.linspace(begin, min(begin + length, n - 1.0), max(2, min(4000, int(length) + 1)))
+    at = np.linspace(begin, min(begin + length, n - 1.0), max(2, min(2000, int(length) + 1)))
     samples = np.interp(at, np.arange(n), window.samples[k])
     peak = max(reading.peak, abs(reading.rms), 1e-12)
     low, high = -1.08 * peak, 1.08 * peak
@@ -96,19 +98,14 @@ def _trace(
     for y in range(rows):
         line: Line = [(f"{scale.get(y, ''):>{AXIS - 1}} ", "dim")]
         under = marks.get(y) or ("dim" if y == zero else "")
-        run, run_meaning = "", ""
-        for c in chars[y]:
-            if c != " ":
-                c_meaning, glyph = meaning, str(c)
+        for found in _RUNS.finditer("".join(chars[y].tolist())):
+            run = found[0]
+            if run[0] != " ":
+                line.append((run, meaning))
             elif under:
-                c_meaning, glyph = under, dash
+                line.append((dash * len(run), under))
             else:
-                c_meaning, glyph = "text", " "
-            if c_meaning != run_meaning and run:
-                line.append((run, run_meaning))
-                run = ""
-            run, run_meaning = run + glyph, c_meaning
-        line.append((run, run_meaning))
+                line.append((run, "text"))
         if y in labels:
             line.append((f" {labels[y][0]}", labels[y][1]))
         lines.append(line)
