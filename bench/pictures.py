@@ -61,7 +61,7 @@ def snapshot_of(scene: str, seconds: float) -> Snapshot:
 
     feed = Feed()
     feed.done = False
-    live = Live(feed, plan_for(f"sim:{scene}", setup_for(None, None, None)))
+    live = Live(feed, plan_for(f"sim:{scene}", setup_for(None, None, None)), gather=0.0)
     last = live.snapshot
     for _ in live.batches(lambda: feed.done):
         if feed.done:

@@ -180,7 +180,7 @@ class _Source:
 def test_a_live_watch_publishes_snapshots():
     wave = _wave(2.0, 0.0)
     source = _Source([Block(wave[:, k : k + 800].copy(), k) for k in range(0, 16000, 800)], INFO)
-    live = Live(source, WatchPlan("x", Setup.empty(), BUILT_IN))
+    live = Live(source, WatchPlan("x", Setup.empty(), BUILT_IN), gather=0.0)
     assert live.snapshot.stage is Stage.STARTING
     numbers = []
     for _ in live.batches():
@@ -198,14 +198,18 @@ def test_a_live_watch_publishes_snapshots():
 def test_a_stream_without_rate_waits_for_the_clock():
     info = StreamInfo("text", (ChannelHint("ch1", gain=1.0),), None, sample_type="text")
     blocks = [Block(_wave(0.5)[:1], k * 4000) for k in range(4)]
-    waiting = Live(_Source(blocks, info, None), WatchPlan("x", Setup.empty(), BUILT_IN))
+    waiting = Live(_Source(blocks, info, None), WatchPlan("x", Setup.empty(), BUILT_IN), gather=0.0)
     assert list(waiting.batches()) == []
     assert waiting.engine is None
     clock = ClockEstimate(8000.2, 1e-4, 3.0, "arrival")
-    known = Live(_Source(blocks, info, clock), WatchPlan("x", Setup.empty(), BUILT_IN))
+    known = Live(_Source(blocks, info, clock), WatchPlan("x", Setup.empty(), BUILT_IN), gather=0.0)
     assert any(len(b.readings) for b in known.batches())
     assert known.rate == 8000.2
-    given = Live(_Source(blocks, info, clock), WatchPlan("x", Setup.empty(), BUILT_IN, rate=8000.0))
+    given = Live(
+        _Source(blocks, info, clock),
+        WatchPlan("x", Setup.empty(), BUILT_IN, rate=8000.0),
+        gather=0.0,
+    )
     assert list(given.batches())
     assert given.rate == 8000.0
 
@@ -266,7 +270,7 @@ def test_a_source_that_goes_and_comes_back_is_one_event():
             return [] if gone else super().take(timeout)
 
     blocks = [Block(wave[:, k : k + 1600].copy(), k) for k in range(0, 16000, 1600)]
-    live = Live(Broken(blocks, INFO), WatchPlan("x", Setup.empty(), BUILT_IN))
+    live = Live(Broken(blocks, INFO), WatchPlan("x", Setup.empty(), BUILT_IN), gather=0.0)
     events = [e for e in _events(live.batches()) if e.kind == "stream"]
     assert [e.phase for e in events] == [Phase.BEGINS, Phase.ENDS]
     assert "looking for it" in events[0].words
