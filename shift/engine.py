@@ -17,7 +17,7 @@ from dsp.power import PowerColumns, measure_pairs
 from dsp.reading import Readings, comparable
 from dsp.verdict import Judge
 from dsp.waveform import Kind, Waveform
-from dsp.window import Windows
+from dsp.window import Flag, Windows
 from dsp.windowing import Windower
 from rig import channels as rig_channels
 from rig.scaling import Scaler
@@ -150,8 +150,11 @@ class Engine:
                 times = self._anchor[1] + (ends - self._anchor[0]) / self._rate
                 told = watcher.half_cycles(times, squares, float(readings.rms[-1, k]))
             else:
-                # No cycles to halve: the windows' own RMS says whether the voltage is back.
-                told = watcher.values(readings.start + readings.duration, readings.rms[:, k])
+                # No cycles to halve: the windows' own RMS says whether the voltage is back. A
+                # scrap between two gaps is shorter than a cycle and says nothing.
+                whole = (windows.flags & int(Flag.EDGE)) == 0
+                ends = readings.start + readings.duration
+                told = watcher.values(ends[whole], readings.rms[whole, k])
             events += self._happenings.voltage(self.channels[k], told)
         return events
 

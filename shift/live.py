@@ -63,6 +63,7 @@ class WatchPlan:
     cards: tuple[MeterCard, ...]
     rate: float | None = None  # sets a second, when the person said so
     setup_name: str = ""
+    speed: float = 1.0  # how many times real time a simulated logger runs; scales its arrivals
 
 
 class Live:
@@ -228,6 +229,8 @@ class Live:
         given = self._plan.rate or self._plan.setup.rate_hz
         if given is not None:
             return given
+        if clock is not None:
+            clock = replace(clock, rate=clock.rate / self._plan.speed)
         if declared is not None:
             tolerance = 1e-6 * (100.0 if tolerance_ppm is None else tolerance_ppm)
             if clock is None or clock.u_rate >= tolerance:

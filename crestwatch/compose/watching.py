@@ -2,6 +2,7 @@
 
 import sys
 from collections.abc import Mapping
+from dataclasses import replace
 from types import TracebackType
 from typing import Self
 
@@ -24,6 +25,7 @@ class Watch:
 
     def __init__(self, source: "Reader | Replay", plan: WatchPlan) -> None:
         self._source = source
+        self._speed = plan.speed
         self.live = Live(source, plan)
 
     def __enter__(self) -> Self:
@@ -39,8 +41,11 @@ class Watch:
         self._source.stop()
 
     def status(self) -> ReaderStatus:
-        """The reader's latest state."""
-        return self._source.status
+        """The reader's latest state; a clock that is run faster on purpose is none of it."""
+        status = self._source.status
+        if self._speed != 1.0 and isinstance(self._source, Reader):
+            return replace(status, clock=None)
+        return status
 
     def described(self, source: str) -> Described:
         """What is being watched, for an output; the engine stands once a Batch has come."""
@@ -104,6 +109,7 @@ def open_watch(
         opened = recording(source.path, rate or setup.rate_hz, scale, format_)
         return Watch(Replay(opened, speed), plan)
     decoder = AutoDecoder(format_ or setup.format, rate=rate)
+    plan = replace(plan, speed=speed)
     reader = Reader(
         opener(source, setup, speed, baud), decoder, reconnect=not isinstance(source, SimSource)
     )

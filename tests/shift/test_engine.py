@@ -214,6 +214,14 @@ def test_a_stream_without_rate_waits_for_the_clock():
     assert given.rate == 8000.0
 
 
+def test_arrivals_of_a_faster_logger_are_scaled():
+    hasty = ClockEstimate(80_004.0, 1e-5, 30.0, "arrival", ppm=9e6)
+    plan = WatchPlan("x", Setup.empty(), BUILT_IN, speed=10.0)
+    live = Live(_Source([Block(_wave(2.0), 0)], INFO, hasty), plan, gather=0.0)
+    assert list(live.batches())
+    assert live.rate == pytest.approx(8000.4)
+
+
 def test_an_aggregate_of_values_is_their_root_mean_square():
     """Half at 230, half at 207 V: 218.8024 V (closed form); their plain mean, 218.5, is another."""
     spread = Spread().with_values(np.full(10, 230.0)).with_values(np.full(10, 207.0))

@@ -90,3 +90,16 @@ def test_the_workshops_compressor_dips_the_supply():
     # The scene's own truth: 17 % less while the motor starts, 0.42 s.
     assert ends[0].value == pytest.approx(0.83 * 231.0, rel=0.002)
     assert ends[0].duration == pytest.approx(scene.start_lasts, abs=0.02)
+
+
+def test_a_scrap_between_two_gaps_is_no_dip():
+    t = np.arange(40000) / RATE
+    wave = 230.0 * np.sqrt(2.0) * np.sin(2.0 * np.pi * 50.0 * t)
+    engine = Engine(Setup.empty(), INFO, BUILT_IN)
+    batches = []
+    for a, b in ((0, 16000), (16050, 16114), (16200, 40000)):  # 64 sets are 0.4 of a cycle
+        gap = 50 if a else 0
+        block = Block(wave[None, a:b].copy(), a, lost_before=gap, gap_before=a > 0)
+        batches += engine.feed(block, RATE)
+    batches += engine.finish()
+    assert [e.kind for b in batches for e in b.events] == ["gap", "gap"]
