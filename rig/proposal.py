@@ -8,6 +8,12 @@ def setup_lines(info: StreamInfo, measured_rate: float | None) -> str:
     lines = ["[logger]"]
     if info.format in ("crestwire", "text", "raw"):
         lines.append(f'format = "{info.format}"')
+    if info.format == "raw":
+        lines += [
+            f'type = "{info.sample_type}"',
+            f"channels = {len(info.channels)}",
+            f'byte_order = "{info.byte_order or "little"}"',
+        ]
     if info.rate is None and measured_rate is not None:
         lines.append(f"# measured from arrival: {measured_rate:.6g} sets a second")
         lines.append(f"# rate_hz = {measured_rate:.6g}")

@@ -29,7 +29,8 @@ class Scaler:
         self._gain = np.array([gain for gain, _, _ in scales])[:, None]
         self._offset = np.array([offset for _, offset, _ in scales])[:, None]
         self._plain = bool(np.all(self._gain == 1.0) and np.all(self._offset == 0.0))
-        self._skipped = 0
+        self._skipped = 0  # sets at the end of what came last that were no numbers
+        self._lost: int | None = 0  # sets missing before those; told with the next Waveform
         self._floating = not info.sample_type.startswith(("u", "i"))
 
     def waveforms(self, block: Block, rate: float) -> list[Waveform]:
@@ -66,20 +67,28 @@ class Scaler:
     ) -> list[Waveform]:
         edges = np.flatnonzero(np.diff(np.concatenate(([False], good, [False])).astype(np.int8)))
         parts: list[Waveform] = []
-        done = -self._skipped  # sets at the end of the block before were no numbers either
+        lost = _sum(self._lost, block.lost_before)
+        gap = block.gap_before or self._skipped > 0
+        missing = self._skipped
+        done = 0
         for a, b in edges.reshape(-1, 2).tolist():
-            skipped = a - done
-            lost = block.lost_before if done <= 0 else 0
+            missing += a - done
             parts.append(
                 Waveform(
                     samples=np.ascontiguousarray(samples[:, a:b]),
                     rate=rate,
                     start=block.index + a,
-                    gap_before=skipped > 0 or (done <= 0 and block.gap_before),
-                    lost_before=None if lost is None else lost + skipped,
+                    gap_before=gap or missing > 0,
+                    lost_before=_sum(lost, missing),
                     arrived=block.arrived,
                 )
             )
-            done = b
-        self._skipped = len(good) - done
+            lost, gap, missing, done = 0, False, 0, b
+        self._skipped = missing + len(good) - done
+        self._lost = lost
         return parts
+
+
+def _sum(one: int | None, other: int | None) -> int | None:
+    """Of two counts, either of which may be unknown."""
+    return None if one is None or other is None else one + other

@@ -37,7 +37,7 @@ def with_zero(setup: Setup, info: StreamInfo, codes: Codes) -> StreamInfo:
         if not _untold(said, hint) or not len(good) or good.min() < 0.0:
             hints.append(hint)  # negative values have their zero at 0
             continue
-        bits = next((b for b in _BITS if good.max() < 2.0**b), None)
+        bits = said.adc_bits or next((b for b in _BITS if good.max() < 2.0**b), None)
         whole = bool(np.all(good == np.rint(good)))
         mean = float(good.mean())
         if bits is not None and whole and abs(mean / 2.0**bits - 0.5) < _NEAR:

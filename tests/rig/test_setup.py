@@ -1,5 +1,7 @@
 """A setup: read as written, refused with its line and the fix."""
 
+from pathlib import Path
+
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -56,7 +58,7 @@ def test_a_setup_is_read_as_written():
     # 4.096 V over 2^12 codes is 1 mV a code; 30 A per V: 0.03 A a code, the other way round.
     assert load_.gain == pytest.approx(-0.03)
     assert load_.unit == "A"
-    assert load_.rails == (0.0, 4095.0)
+    assert (load_.adc_bits, load_.coded) == (12, True)
     assert setup.pairs == (("mains", "load"),)
 
 
@@ -67,10 +69,17 @@ def test_nothing_is_required():
 # what is wrong: (text, line, words of the message, words of the advice)
 WRONG = {
     "no TOML": ("site = \n", 1, "TOML", "docs/setup.md"),
-    "cut text": ('site = "x', 1, "TOML", "docs/setup.md"),
+    "cut text": ('site = "x', 1, "TOML", "close the quotes"),
+    "a decimal comma": ("limit_pct = 2,5\n", 1, "column 14", "limit_pct = 2.5"),
+    "a percent sign": ("\nlimit_pct = 2 %  # tight\n", 2, "TOML", "alone: limit_pct = 2"),
+    "no quotes": ("site = Hall 2 # north\n", 1, "TOML", 'site = "Hall 2"'),
+    "a key that stands twice": ("limit_pct = 2\nlimit_pct = 3\n", 2, "TOML", "remove one"),
+    "a table that stands twice": ("[logger]\nbaud = 9600\n[logger]\n", 3, "TOML", "once in the file"),
+    "two tables with one bracket": ('[channel]\nname = "a"\n[channel]\n', 3, "TOML", "[[channel]]"),
+    "no equals sign": ("limit_pct 2\n", 1, "TOML", "equals sign"),
     "a key with a slip": ("\n\nnominal = 50\n", 3, "nominal", "nominal_hz"),
     "a slip in a channel": ('[[channel]]\nname = "a"\ngian = 2\n', 3, "gian", "gain"),
-    "text for a number": ('limit_pct = "two"\n', 1, "not a number", "limit_pct = 1.0"),
+    "text for a number": ('limit_pct = "two"\n', 1, "not a number", "limit_pct = 1"),
     "a number for text": ("site = 4\n", 1, "not text", "quotes"),
     "out of range": ("nominal_hz = 400\n", 1, "out of range", "40 to 70"),
     "not finite": ("limit_pct = nan\n", 1, "out of range", "0.01"),
@@ -79,13 +88,35 @@ WRONG = {
     "two scales": ("[[channel]]\ngain = 1\ndivider = 200\nvolts_per_code = 1\n", 2, "already", "remove"),
     "divider and clamp": ("[[channel]]\nvolts_per_code = 1\ndivider = 1\nclamp_a_per_v = 1\n", 4, "not both", "remove"),
     "no scale": ("[[channel]]\ngain = 0\n", 2, "scale is 0", "not 0"),
-    "twins": ('[[channel]]\nname = "a"\n[[channel]]\nname = "a"\n', 2, "two channels", "own name"),
+    "twins": ('[[channel]]\nname = "a"\n[[channel]]\nname = "a"\n', 4, "two channels", "own name"),
     "a lone pair": ('[[pair]]\nvoltage = "a"\n', 1, "voltage and a current", "current"),
     "one bracket": ('[channel]\nname = "a"\n', 1, "list of tables", "[[channel]]"),
     "an unknown kind": ('[[channel]]\nkind = "heat"\n', 2, "kind", "voltage"),
     "an unknown format": ('[logger]\nformat = "morse"\n', 2, "morse", "crestwire"),
     "an input that is none": ("[[channel]]\ninput = 0\n", 2, "input", "first channel"),
-    "an unknown scale of truth": ("[[channel]]\ninvert = true\n", 2, "scale", "gain"),
+    "text for true": ('[[channel]]\ninvert = "yes"\n', 2, "true nor false", "invert = true"),
+    "half a bit": ("[[channel]]\nadc_bits = 12.5\n", 2, "not whole", "6 to 32"),
+    "a number beyond floats": (f"nominal_hz = {'9' * 400}\n", 1, "out of range", "40 to 70"),
+    "a number beyond digits": (f"\nnominal_hz = 0x{'f' * 9000}\n", 2, "out of range", "40 to 70"),
+    "a number in quotes": ('nominal_hz = "60"\n', 1, "not a number", "nominal_hz = 60"),
+    "half a key": ("[[channel]]\nclamp = 30\n", 2, "clamp", "clamp_a_per_v"),
+    "a key of another table": ("[logger]\nrate_hz = 4000\nrate = 4000\n", 3, "rate", "rate_hz"),
+    "in the second channel": ("[[channel]]\nu_gain_pct = 1\n[[channel]]\nu_gain_pct = 200\n", 4, "200", "100"),
+    "a heading with spaces": ("[[ channel ]]\ngain = 1\n[[channel]]\ngian = 1\n", 4, "gian", "gain"),
+    "a heading in a text": ("site = '''\n[[channel]]\n'''\n[[channel]]\ngian = 1\n", 5, "gian", "gain"),
+    "channels in a list": ("channel = [\n  {gain = 1},\n  {gian = 1}]\n", 3, "gian", "gain"),
+    "a dotted key": ("logger.buad = 9600\n", 1, "buad", "baud"),
+    "a word first in a comment": ('# limit_pct: tight\nlimit_pct = "two"\n', 2, "not a number", "limit_pct"),
+    "a unit spelled out": ('[[channel]]\nunit = "volts"\ngain = 1\n', 2, "volts", 'unit = "V"'),
+    "amperes of a divider": ('[[channel]]\nunit = "A"\nvolts_per_code = 1\ndivider = 9\n', 2, "gives volts", "clamp_a_per_v"),
+    "volts of a clamp": ('[[channel]]\nunit = "V"\nvolts_per_code = 1\nclamp_a_per_v = 9\n', 2, "gives amperes", '"A"'),
+    "as good as no scale": ("[[channel]]\ngain = 1e-320\n", 2, "scale is 0", "not 0"),
+    "a channel with itself": ('[[pair]]\nvoltage = "a"\ncurrent = "a"\n', 3, "with itself", "voltage and a current"),
+    "a pair twice": ('[[pair]]\nvoltage = "a"\ncurrent = "b"\n[[pair]]\nvoltage = "a"\ncurrent = "b"\n', 4, "twice", "remove one"),
+    "an input without a name": ('[[channel]]\ninput = ""\n', 2, "nor a name", "input = 1"),
+    "words of text": ('[logger]\nformat = "text"\ntype = "i16"\n', 3, "only of use with raw", "raw"),
+    "raw words of nobody knows how many": ('[logger]\nformat = "raw"\ntype = "i16"\n', 3, "without channels", "channels = 2"),
+    "more channels than a logger has": ("[[channel]]\n" * 33, 33, "33 channels", "32"),
 }  # fmt: skip
 
 
@@ -100,6 +131,27 @@ def test_a_mistake_is_told_with_its_line_and_the_fix(sentence):
     assert fix in " ".join(caught.value.__notes__)
 
 
+@pytest.mark.parametrize("text", [f"a = {'[' * 20000}", f"nominal_hz = {'9' * 5000}"])
+def test_what_the_toml_reader_chokes_on_is_refused_in_a_sentence(text):
+    with pytest.raises(SetupError, match="panel"):
+        parse(text, "panel.toml")
+
+
+def test_the_scale_of_a_converter_is_in_the_unit_as_written():
+    text = '[[channel]]\nunit = "kV"\nvolts_per_code = 0.5\ndivider = 2000\n'
+    (channel,) = parse(text, "p").channels
+    assert (channel.unit, channel.gain) == ("kV", 1.0)  # 0.5 V x 2000 = 1000 V a code
+    (bare,) = parse("[[channel]]\nadc_bits = 10\nadc_reference_v = 5.12\n", "p").channels
+    assert (bare.unit, bare.gain) == ("V", pytest.approx(0.005))  # volts at the pin
+
+
+def test_raw_words_are_described_with_their_particulars():
+    said = parse('[logger]\nformat = "raw"\ntype = "i16"\nchannels = 3\nbyte_order = "big"\n', "p")
+    assert said.format == "raw:i16:3:big"
+    assert parse('[logger]\nformat = "raw"\nchannels = 2\n', "p").format == "raw:u16:2:little"
+    assert parse('[logger]\nformat = "raw"\n', "p").format == "raw"
+
+
 def test_names_are_cleaned_where_they_enter():
     setup = parse('site = "a\\u001b[2Jb\\u202e"\n[[channel]]\nname = "x\\ny"\n', "p")
     assert setup.site.isprintable()
@@ -112,6 +164,21 @@ def test_a_file_that_is_no_setup(tmp_path, content):
     path.write_bytes(content)
     with pytest.raises(SetupError):
         load(path)
+
+
+def test_a_file_as_a_windows_editor_saves_it(tmp_path):
+    path = tmp_path / "bom.toml"
+    path.write_bytes(b"\xef\xbb\xbf" + GOOD.replace("\n", "\r\n").encode())
+    assert load(path).site == "Riverside"
+    path.write_bytes(b'limit_pct = 2\r\nsite = "K\xfcche"\r\n')  # not UTF-8
+    with pytest.raises(SetupError, match="line 2: is not UTF-8"):
+        load(path)
+
+
+@pytest.mark.parametrize("name", [".", "/dev/zero"])
+def test_a_path_that_is_no_file(name):
+    with pytest.raises(SetupError, match="is not a file"):
+        load(Path(name))
 
 
 def test_a_file_that_is_not_there(tmp_path):
