@@ -28,9 +28,10 @@ pictures: $(VENV)/.dev
 setup: $(VENV)/.dev
 
 $(VENV)/bin/python:
-	@$(PYTHON) -c 'import sys; sys.exit(sys.version_info < (3, 11))' || \
+	@$(PYTHON) -c 'import sys; sys.exit(sys.version_info < (3, 11))' 2> /dev/null || \
 	  { echo "crestwatch needs Python 3.11 or newer; name one with make PYTHON=python3.11"; exit 1; }
-	$(PYTHON) -m venv $(VENV)
+	@$(PYTHON) -m venv $(VENV) || \
+	  { rm -rf $(VENV); echo "no virtual environment could be made with $(PYTHON); on Debian and Ubuntu: apt install python3-venv"; exit 1; }
 
 $(VENV)/.runtime: $(VENV)/bin/python pyproject.toml
 	$(BIN)/python -m pip install --quiet --disable-pip-version-check -e .
