@@ -19,6 +19,17 @@ DEFAULT_LIMIT = 0.02  # an averaging meter misleads beyond 2 % (common practice,
 SMALLEST_SCALE = 1e-15  # of a code or more; anything smaller is a slip, and would drown in rounding
 MOST_CHANNELS = 32
 
+TOP_KEYS = (
+    "site", "nominal_hz", "limit_pct", "declared_v", "reference", "logger", "channel", "pair",
+)  # fmt: skip
+LOGGER_KEYS = ("format", "type", "channels", "byte_order", "baud", "rate_hz")
+CHANNEL_KEYS = (
+    "input", "name", "unit", "kind", "gain", "volts_per_code", "adc_bits", "adc_reference_v",
+    "divider", "clamp_a_per_v", "offset_codes", "invert", "delay_us", "u_gain_pct", "u_offset",
+    "code_min", "code_max",
+)  # fmt: skip
+PAIR_KEYS = ("voltage", "current")
+
 
 @dataclass(frozen=True, slots=True)
 class ChannelSetup:
@@ -88,11 +99,9 @@ def parse(text: str, where: str) -> Setup:
 
 
 def _setup(top: Fields) -> Setup:
-    top.known(
-        ("site", "nominal_hz", "limit_pct", "declared_v", "reference", "logger", "channel", "pair")
-    )
+    top.known(TOP_KEYS)
     logger = top.table("logger")
-    logger.known(("format", "type", "channels", "byte_order", "baud", "rate_hz"))
+    logger.known(LOGGER_KEYS)
     rows = top.rows("channel")
     if len(rows) > MOST_CHANNELS:
         raise rows[MOST_CHANNELS].wrong(
@@ -149,15 +158,8 @@ def _format(logger: Fields) -> str | None:
     return f"raw:{kind or 'u16'}:{channels}:{order or 'little'}"
 
 
-_CHANNEL_KEYS = (
-    "input", "name", "unit", "kind", "gain", "volts_per_code", "adc_bits", "adc_reference_v",
-    "divider", "clamp_a_per_v", "offset_codes", "invert", "delay_us", "u_gain_pct", "u_offset",
-    "code_min", "code_max",
-)  # fmt: skip
-
-
 def _channel(row: Fields) -> ChannelSetup:
-    row.known(_CHANNEL_KEYS)
+    row.known(CHANNEL_KEYS)
     kind = row.choice("kind", tuple(Kind))
     delay = row.number("delay_us", -1e6, 1e6)
     unit, gain = _scale(row)
@@ -261,7 +263,7 @@ def _not_nothing(row: Fields, gain: float, key: str) -> float:
 
 
 def _pair(row: Fields) -> tuple[str, str]:
-    row.known(("voltage", "current"))
+    row.known(PAIR_KEYS)
     voltage, current = row.text("voltage"), row.text("current")
     if not voltage or not current:
         raise row.wrong(

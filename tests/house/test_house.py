@@ -118,6 +118,57 @@ def test_nothing_tracked_names_hosts_or_places_of_one_machine():
         assert not found, (_name(path), found)
 
 
+def test_every_key_of_a_setup_stands_on_its_page_and_no_other():
+    from rig import setup
+
+    page = (TOP / "docs" / "setup.md").read_text(encoding="utf-8")
+    keys = {*setup.TOP_KEYS, *setup.LOGGER_KEYS, *setup.CHANNEL_KEYS, *setup.PAIR_KEYS}
+    tables = [line.split("|")[1] for line in page.splitlines() if line.startswith("| `")]
+    told = {key for cell in tables for key in re.findall(r"`(\w+)`", cell)}
+    assert told <= keys
+    assert not [key for key in keys if f"`{key}`" not in page and f"{key}]" not in page]
+
+
+def test_the_setup_lines_on_the_papers_load():
+    from rig.setup import parse
+
+    for paper in (*TOP.glob("*.md"), *(TOP / "docs").glob("*.md")):
+        for text in re.findall(r"```toml\n(.*?)```", paper.read_text(encoding="utf-8"), re.DOTALL):
+            parse(text, paper.name)
+
+
+def test_what_is_installed_is_what_the_rooms_import():
+    import tomllib
+
+    project = tomllib.loads((TOP / "pyproject.toml").read_text(encoding="utf-8"))["project"]
+    asked = {re.split(r"[<>=~!\[; ]", one)[0] for one in project["dependencies"]}
+    optional = {"soundfile"}  # the extra "sound"
+    imported = set()
+    for path in CODE:
+        for node in ast.walk(ast.parse(path.read_text(encoding="utf-8"))):
+            if isinstance(node, ast.Import):
+                imported |= {alias.name.split(".")[0] for alias in node.names}
+            elif isinstance(node, ast.ImportFrom) and node.module:
+                imported.add(node.module.split(".")[0])
+    foreign = imported - set(ROOMS) - set(sys.stdlib_module_names) - optional
+    named = {"serial": "pyserial"}  # imported under another name than it is installed by
+    assert {named.get(one, one) for one in foreign} == asked
+
+
+def test_the_version_is_one_and_stands_in_the_changes():
+    import tomllib
+
+    from crestwatch.cli import main
+
+    project = tomllib.loads((TOP / "pyproject.toml").read_text(encoding="utf-8"))["project"]
+    done = subprocess.run(
+        [sys.executable, "-c", f"from {main.__module__} import main; main(['--version'])"],
+        capture_output=True, text=True, check=False,
+    )  # fmt: skip
+    assert project["version"] in done.stdout
+    assert f"## {project['version']}" in (TOP / "CHANGELOG.md").read_text(encoding="utf-8")
+
+
 def test_the_example_setup_loads():
     from rig.setup_file import load
 
