@@ -47,7 +47,7 @@ def _agree(setup: Setup, said: ChannelSetup, hint: ChannelHint) -> None:
             said.line,
             f'{said.name or hint.name} comes in {theirs}, which unit = "{said.unit}" does not turn '
             f"into {ours}",
-            f"add gain, how many {said.unit} one {theirs} is, or remove unit",
+            f"add gain, what one code is worth in {said.unit}, or remove unit",
         )
 
 
