@@ -59,7 +59,6 @@ class ClockFit:
         self._origin: tuple[int, float] | None = None
         self._stretch_s = FIRST_STRETCH_S
         self._stretches: list[list[Point]] = []
-        self._current = 0  # number of the stretch being filled, in units of _stretch_s
         self._numbers: list[int] = []
         self._last: Point = (0.0, 0.0)
         self._line: tuple[float, float] | None = None  # slope and offset of the latest estimate

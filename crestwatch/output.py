@@ -7,7 +7,6 @@ words for the person go to stderr elsewhere.
 import csv
 import io
 import json
-import sys
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Protocol, TextIO
@@ -232,7 +231,9 @@ class TableOutput:
 
         assert self._first is not None
         first = self._first
-        console = Console(file=self._out, highlight=False, width=None if _tty(self._out) else 110)
+        console = Console(
+            file=self._out, highlight=False, width=None if self._out.isatty() else 110
+        )
         nominal = "" if first.nominal is None else f", nominal {first.nominal:g} Hz"
         console.print(
             Text(
@@ -317,7 +318,3 @@ def _cell(text: str) -> str:
 def _list(value: record.Value) -> Sequence[record.Value]:
     assert isinstance(value, list)
     return value
-
-
-def _tty(out: TextIO) -> bool:
-    return out is sys.stdout and out.isatty()

@@ -2,8 +2,11 @@
 
 import sys
 import time
-from types import TracebackType
-from typing import Self
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from rich.progress import Progress as Bar
+    from rich.progress import TaskID
 
 PATIENCE = 1.0  # s before a bar appears: what is quicker needs none
 
@@ -11,41 +14,47 @@ PATIENCE = 1.0  # s before a bar appears: what is quicker needs none
 class Progress:
     """A bar that appears once the work has lasted; silent in a pipe."""
 
-    def __init__(self, words: str, total: int) -> None:
+    def __init__(self, words: str, total: int, wanted: bool = True) -> None:
+        """Progress of `words` up to `total`, in whatever it is counted."""
         self._words = words
         self._total = total
         self._began = time.monotonic()
-        self._shown = 0.0
-        self._drawn = False
-        self._watched = sys.stderr.isatty() and total > 0
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self,
-        kind: type[BaseException] | None,
-        error: BaseException | None,
-        trace: TracebackType | None,
-    ) -> None:
-        if self._drawn:
-            sys.stderr.write("\r\x1b[K")
-            sys.stderr.flush()
+        self._bar: Bar | None = None
+        self._task: TaskID | None = None
+        self._watched = wanted and sys.stderr.isatty() and total > 0
 
     def advance_to(self, done: int) -> None:
         """Tell how much of the total is done."""
         if not self._watched:
             return
-        now = time.monotonic()
-        if now - self._began < PATIENCE or now - self._shown < 0.1:
-            return
-        self._shown = now
-        share = min(1.0, done / self._total)
-        left = (now - self._began) * (1.0 - share) / max(share, 1e-6)
-        filled = round(24 * share)
-        bar = "#" * filled + "-" * (24 - filled)
-        sys.stderr.write(
-            f"\r{self._words} [{bar}] {100 * share:3.0f} %, about {left:.0f} s left\x1b[K"
+        if self._bar is None:
+            if time.monotonic() - self._began < PATIENCE:
+                return
+            self._begin()
+        if self._bar is not None and self._task is not None:
+            self._bar.update(self._task, completed=done)
+
+    def close(self) -> None:
+        """Take the bar away."""
+        if self._bar is not None:
+            self._bar.stop()
+
+    def _begin(self) -> None:
+        from rich.console import Console
+        from rich.progress import BarColumn, TaskProgressColumn, TextColumn, TimeRemainingColumn
+        from rich.progress import Progress as Bar
+
+        self._bar = Bar(
+            TextColumn("{task.description}"),
+            BarColumn(),
+            TaskProgressColumn(),
+            TextColumn("left"),
+            TimeRemainingColumn(),
+            console=Console(stderr=True),
+            transient=True,
+            # Results go where they were going; the bar owns no stream but its own.
+            redirect_stdout=False,
+            redirect_stderr=False,
         )
-        sys.stderr.flush()
-        self._drawn = True
+        self._bar.start()
+        self._task = self._bar.add_task(self._words, total=self._total)

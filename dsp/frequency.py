@@ -16,7 +16,6 @@ import numpy.typing as npt
 
 Floats = npt.NDArray[np.float64]
 
-TAPER_CYCLES = 3
 LOWEST, HIGHEST = 38.0, 72.0  # Hz: where a mains fundamental is looked for
 # To lock: the line's share of the power (white noise of n samples gives 40/n once in 1e16
 # windows), and phase and amplitude steady over two windows.

@@ -23,11 +23,6 @@ _BETA = 0.97 * np.pi * _WIDTH * (1.0 - 0.5 / _OVERSAMPLING)
 _GROUP = 128  # windows at a time: bounds memory, keeps the FFTs in cache
 
 
-def orders_within(nu: float) -> int:
-    """How many orders lie below TOP at a fundamental of `nu` cycles a sample."""
-    return int(min(ORDERS, np.floor(TOP / nu))) if nu > 0.0 else 0
-
-
 def phasors(samples: Floats, begins: Floats, ends: Floats, cycles: int) -> Phasors:
     """RMS phasors of every channel in windows of `cycles` cycles each.
 

@@ -45,7 +45,6 @@ class MeterCard:
     bandwidth_hz: float | None = None  # of a one-pole roll-off; RMS response only
     full_range: float | None = None  # RMS that fills the range; None: the reading fills it
     accuracy_pct: float = 0.0  # of reading, limits as a data sheet states them
-    accuracy_counts: float = 0.0  # of the last digit
 
     @property
     def u_accuracy(self) -> float:

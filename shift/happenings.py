@@ -47,7 +47,6 @@ class Happenings:
         self._excursions: dict[str, _Open] = {}
         self._gap: _Open | None = None
         self._stopped: _Open | None = None
-        self._seen = 0.0  # end of the last window looked at [s]
 
     def windows(
         self,
@@ -70,7 +69,6 @@ class Happenings:
         for c, channel in enumerate(self._channels):
             events += self._misleads(c, channel, readings, error[:, c], misleads[:, c])
             events += self._clips(c, channel, readings, clipped[:, c])
-        self._seen = float(readings.start[-1] + readings.duration[-1])
         return tuple(sorted(events, key=_when))
 
     def voltage(self, channel: Channel, told: Sequence[Excursion]) -> tuple[Event, ...]:

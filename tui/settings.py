@@ -4,9 +4,6 @@ import os
 import sys
 from dataclasses import dataclass
 
-THEMES = ("dark", "light", "contrast", "mono")
-GLYPHS = ("braille", "block", "half", "ascii")
-
 
 @dataclass(frozen=True, slots=True)
 class Settings:

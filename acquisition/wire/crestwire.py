@@ -66,7 +66,6 @@ class CrestwireDecoder:
         self._overlong = False  # inside a unit that has already grown too long
         self._lead_in = True  # nothing good since the link opened: what fails is a cut unit
         self._shape: tuple[int, SampleType] | None = None  # channels and type of DATA
-        self._boot_of_shape = 0
         self._first_good = float("nan")
         # What is to be told with the next Block.
         self._lost_before = 0

@@ -6,6 +6,7 @@ per window. A damaged file is measured as far as it is good.
 
 import argparse
 import sys
+from contextlib import closing
 from pathlib import Path
 
 from crestwatch import arguments, diagnostics
@@ -57,11 +58,14 @@ def run(options: argparse.Namespace) -> int:
     )
     for sentence in measuring.notes:
         diagnostics.note(sentence)
-    with measuring, Progress("measuring", measuring.bytes_total) as progress:
+    # Rows that scroll past on the same terminal are progress enough.
+    bar = isinstance(output, TableOutput) or not sys.stdout.isatty()
+    with closing(measuring):
         output.begin(measuring.described(str(options.recording)))
-        for batch in measuring.batches():
-            output.batch(batch)
-            progress.advance_to(measuring.bytes_read())
+        with closing(Progress("measuring", measuring.bytes_total, bar)) as progress:
+            for batch in measuring.batches():
+                output.batch(batch)
+                progress.advance_to(measuring.bytes_read())
         output.end(measuring.summaries, measuring.status(), measuring.engine.seconds)
     if measuring.damage is not None:
         # What was measured stands above; the exit code tells a script that it is not all.

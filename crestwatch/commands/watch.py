@@ -7,6 +7,7 @@ was lost. Leave with q, or Ctrl+C in the plain forms.
 import argparse
 import sys
 import time
+from contextlib import closing
 from typing import TYPE_CHECKING
 
 from crestwatch import arguments, diagnostics
@@ -80,7 +81,7 @@ def run(options: argparse.Namespace) -> int:
         speed=options.speed,
         baud=options.baud,
     )
-    with watch:
+    with closing(watch):
         if options.plain or options.json_lines or not sys.stdout.isatty():
             return _print(watch, options)
         watching.show_screen(watch, options.theme, options.glyphs, options.length)

@@ -3,8 +3,6 @@
 from collections.abc import Iterator, Mapping
 from dataclasses import replace
 from pathlib import Path
-from types import TracebackType
-from typing import Self
 
 from acquisition.errors import RecordingError
 from acquisition.recordings.recording import Recording
@@ -13,6 +11,7 @@ from acquisition.stream import StreamInfo
 from crestwatch.compose.sources import recording
 from crestwatch.output import Described
 from dsp.meters import BUILT_IN
+from rig.channels import advice
 from rig.setup import Setup
 from rig.zero import needs_zero, with_zero
 from shift.batch import Batch
@@ -21,7 +20,7 @@ from shift.summary import Summary, with_run
 
 
 class Measuring:
-    """A recording being measured; a context manager that closes the file."""
+    """A recording being measured; whoever opens it closes it."""
 
     def __init__(self, recording: Recording, setup: Setup, rate: float | None) -> None:
         declared = rate or setup.rate_hz or recording.info.rate
@@ -35,22 +34,15 @@ class Measuring:
         self.info: StreamInfo = info
         self.engine = Engine(setup, info, BUILT_IN)
         self.summaries = tuple(Summary(channel) for channel in self.engine.channels)
-        self.notes = info.notes
+        self.notes = info.notes + advice(setup, self.engine.channels)
         self.bytes_total = recording.bytes_total
         self.damage: RecordingError | None = None
         self._recording = recording
         self._received = 0
         self._lost: int | None = 0
 
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self,
-        kind: type[BaseException] | None,
-        error: BaseException | None,
-        trace: TracebackType | None,
-    ) -> None:
+    def close(self) -> None:
+        """Let go of the file."""
         self._recording.close()
 
     def described(self, source: str) -> Described:

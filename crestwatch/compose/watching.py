@@ -3,8 +3,6 @@
 import sys
 from collections.abc import Mapping
 from dataclasses import replace
-from types import TracebackType
-from typing import Self
 
 from acquisition.autodecode import AutoDecoder
 from acquisition.reader import Reader
@@ -21,22 +19,15 @@ from shift.live import Live, WatchPlan
 
 
 class Watch:
-    """An opened live watch; a context manager that closes its source."""
+    """An opened live watch; whoever opens it closes it."""
 
     def __init__(self, source: "Reader | Replay", plan: WatchPlan) -> None:
         self._source = source
         self._speed = plan.speed
         self.live = Live(source, plan)
 
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self,
-        kind: type[BaseException] | None,
-        error: BaseException | None,
-        trace: TracebackType | None,
-    ) -> None:
+    def close(self) -> None:
+        """End the watch and let go of its source."""
         self.live.stop()
         self._source.stop()
 

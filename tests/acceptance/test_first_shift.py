@@ -1,6 +1,8 @@
 """From a logger's bytes to a verdict: the real command, real ptys and sockets, real files."""
 
 import math
+import re
+import sys
 import wave
 
 import numpy as np
@@ -243,3 +245,40 @@ def test_an_old_encoding_is_no_exception(run, tmp_path, cut_wave, encoding):
         assert ran.err == ""
     ran = run("measure", str(path), "--json-lines", PYTHONIOENCODING=encoding)
     assert ran.records("source")[0]["channels"][0]["name"] == "Büro"  # records are UTF-8, always
+
+
+def test_a_file_in_counts_is_said_to_be(run, tmp_path, cut_wave):
+    path = tmp_path / "wave.wav"
+    _write("wav", path, cut_wave)
+    assert "All channels are in counts" in run("measure", str(path)).err
+    assert run("measure", str(path), "--scale", "ch1=200V", "--scale", "ch2=20A").err == ""
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="needs a pseudo-terminal")
+def test_the_table_fits_a_terminal_of_80_columns(tmp_path, cut_wave):
+    import fcntl
+    import os
+    import pty
+    import struct
+    import subprocess
+    import termios
+    from pathlib import Path
+
+    path = tmp_path / "w.npz"
+    _write("npz", path, cut_wave)
+    master, slave = pty.openpty()
+    fcntl.ioctl(slave, termios.TIOCSWINSZ, struct.pack("HHHH", 24, 80, 0, 0))
+    command = str(Path(sys.executable).with_name("crestwatch"))
+    environment = {k: v for k, v in os.environ.items() if k not in ("COLUMNS", "LINES")}
+    subprocess.run(
+        [command, "measure", str(path.name)],
+        stdin=slave, stdout=slave, stderr=slave, cwd=tmp_path, check=True, timeout=60,
+        env={**environment, "NO_COLOR": "1", "TERM": "xterm"},
+    )  # fmt: skip
+    os.close(slave)
+    shown = os.read(master, 65536).decode()
+    os.close(master)
+    bare = re.sub(r"\x1b\[[0-9;]*m", "", shown)
+    header = next(line for line in bare.splitlines() if "true RMS" in line)
+    assert "misled" in header  # one line holds them all
+    assert len(header.rstrip()) <= 80

@@ -20,7 +20,6 @@ from acquisition.errors import (
     LinkAbsent,
     LinkBusy,
     LinkClosed,
-    LinkFinished,
     LinkForbidden,
     LinkLost,
     LinkUnusable,
@@ -28,7 +27,6 @@ from acquisition.errors import (
 from acquisition.links import serial_port
 from acquisition.links.far_end import PtyEnd, TcpEnd, serve
 from acquisition.links.ports import find_ports
-from acquisition.links.replay import ReplayLink
 from acquisition.links.serial_port import SerialDevice, SerialLink, SerialOpener, find_again
 from acquisition.links.tcp import TcpLink
 from acquisition.reader import Reader
@@ -288,24 +286,6 @@ def test_tcp_port_in_use():
         TcpEnd(int(end.address.rsplit(":", 1)[1]))
     with pytest.raises(LinkUnusable):
         TcpEnd(99999)
-
-
-# Replay
-
-
-def test_replay_gives_the_file_and_ends(tmp_path):
-    path = tmp_path / "capture.bin"
-    path.write_bytes(bytes(range(256)) * 300)
-    with closing(ReplayLink(path)) as link:
-        data = b""
-        with pytest.raises(LinkFinished):
-            while True:
-                data += link.read()
-    assert data == path.read_bytes()
-    with pytest.raises(LinkAbsent, match="there is no file"):
-        ReplayLink(tmp_path / "none")
-    with pytest.raises(LinkUnusable):
-        ReplayLink(tmp_path)
 
 
 # Far ends
